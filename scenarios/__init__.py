@@ -1,0 +1,1 @@
+"""The face: scenario files, questions, maps, tables, layers and the command line."""

@@ -1,0 +1,1 @@
+"""The questions a scenario can ask, one module each."""

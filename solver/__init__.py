@@ -1,0 +1,1 @@
+"""Strengths: boundary conditions, the fit to levels with its error model, responses."""
