@@ -1,0 +1,44 @@
+"""The one place that knows how kernels are compiled and where their machine code is kept.
+
+numba trusts the time stamp of the file that a function stands in. A kernel that calls another module's kernel
+would so be served stale after an edit of the other. The cache folder therefore carries a hash of every module
+that can hold a kernel: an edit anywhere gives a new folder.
+"""
+
+import hashlib
+import os
+import tempfile
+from pathlib import Path
+
+import numba
+import platformdirs
+
+_PACKAGE = Path(__file__).resolve().parent.parent
+_ROOMS = ("elements", "solver", "tracing")
+
+
+def _cache_folder() -> Path:
+    """Folder of the compiled kernels: user cache / version of the sources, or a temporary one."""
+    digest = hashlib.sha256(numba.__version__.encode())
+    for room in _ROOMS:
+        for source in sorted((_PACKAGE / room).glob("*.py")):
+            digest.update(source.read_bytes())
+    name = digest.hexdigest()[:16]
+    for root in (platformdirs.user_cache_path("wellshed"), Path(tempfile.gettempdir()) / "wellshed"):
+        folder = root / "kernels" / name
+        try:
+            folder.mkdir(parents=True, exist_ok=True)
+        except OSError:
+            continue
+        if os.access(folder, os.W_OK):
+            return folder
+    return Path(tempfile.mkdtemp(prefix="wellshed-"))
+
+
+if "NUMBA_CACHE_DIR" not in os.environ:
+    numba.config.CACHE_DIR = str(_cache_folder())
+
+# Division by zero gives inf instead of a hidden branch (which would stop vectorisation), NaN stays NaN: no fastmath.
+kernel = numba.njit(cache=True, error_model="numpy")
+parallel_kernel = numba.njit(cache=True, error_model="numpy", parallel=True)
+prange = numba.prange
