@@ -41,9 +41,7 @@ class Panels(NamedTuple):
     n_coef: Ints
 
 
-def make_panels(
-    z1: np.ndarray, z2: np.ndarray, kind: np.ndarray, vortex: np.ndarray, n_coef: np.ndarray
-) -> Panels:
+def make_panels(z1: np.ndarray, z2: np.ndarray, kind: np.ndarray, vortex: np.ndarray, n_coef: np.ndarray) -> Panels:
     """Panels from complex end points (p,) in local m, singular end first."""
     middle, half = 0.5 * (z1 + z2), 0.5 * (z2 - z1)
     columns = [

@@ -60,9 +60,7 @@ class FlowField:
         """Recharge rate (m/d) at each point."""
         return self._evaluate(kernels_field.recharges, x, y, 1)[0]
 
-    def _evaluate(
-        self, driver: Callable, x: ArrayLike, y: ArrayLike, n_out: int
-    ) -> list[NDArray[np.float64]]:
+    def _evaluate(self, driver: Callable, x: ArrayLike, y: ArrayLike, n_out: int) -> list[NDArray[np.float64]]:
         """Broadcast, localise, run a driver over contiguous points, give back the shape."""
         xs, ys = np.broadcast_arrays(np.asarray(x, dtype=float), np.asarray(y, dtype=float))
         local_x = np.ascontiguousarray(xs.ravel() - self.origin[0])
@@ -96,9 +94,7 @@ def superpose(
         uniform[:4] = flow.qx, flow.qy, flow.x0 - x0, flow.y0 - y0
     rows = [[w.x - x0, w.y - y0, w.rate, w.radius] for w in wells]
     shape = no_panels() if panels is None else panels
-    strengths = (
-        np.zeros((len(shape.kind), N_COEF)) if coef is None else np.ascontiguousarray(coef, dtype=float)
-    )
+    strengths = np.zeros((len(shape.kind), N_COEF)) if coef is None else np.ascontiguousarray(coef, dtype=float)
     jumps = np.zeros(len(shape.kind)) if jump is None else np.ascontiguousarray(jump, dtype=float)
     arrays = FieldArrays(
         uniform,

@@ -121,9 +121,7 @@ def rings_at(x, y, f, want_potential):
                 phi -= rate * (f.ring[r, 4] * (0.5 * np.log(d2) - log_scale) - logs.real)
             continue
         for e in range(f.ring_start[r], f.ring_start[r + 1]):
-            integral, d, nx, ny = edge_log_integral(
-                x, y, f.edge[e, 0], f.edge[e, 1], f.edge[e, 2], f.edge[e, 3]
-            )
+            integral, d, nx, ny = edge_log_integral(x, y, f.edge[e, 0], f.edge[e, 1], f.edge[e, 2], f.edge[e, 3])
             qx -= rate * nx * integral
             qy -= rate * ny * integral
             if want_potential:
@@ -152,9 +150,7 @@ def potential_at(x, y, f, work):
     u = f.uniform
     phi = u[4] - u[0] * (x - u[2]) - u[1] * (y - u[3])
     for w in range(f.wells.shape[0]):
-        phi += potential_well(
-            x - f.wells[w, 0], y - f.wells[w, 1], f.wells[w, 2], f.wells[w, 3], np.exp(u[5])
-        )
+        phi += potential_well(x - f.wells[w, 0], y - f.wells[w, 1], f.wells[w, 2], f.wells[w, 3], np.exp(u[5]))
     for p in range(f.kind.shape[0]):
         re, im = panel_potential(x, y, p, f, work)
         if f.vortex[p] == 0:

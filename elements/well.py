@@ -18,6 +18,4 @@ class PumpingWell:
 
     def __post_init__(self) -> None:
         if not self.radius > 0:
-            raise ValueError(
-                f"radius of well {self.name!r} must be positive (m); instead received {self.radius}"
-            )
+            raise ValueError(f"radius of well {self.name!r} must be positive (m); instead received {self.radius}")
