@@ -54,3 +54,13 @@ class Aquifer:
         """Saturated thickness (m) at a discharge potential (m3/d), any shape; 0 where dry."""
         u = np.maximum(np.asarray(potential, dtype=float), 0.0) / self.conductivity
         return np.minimum(np.sqrt(2.0 * u), self.thickness)
+
+    def potential_change(
+        self, head: ArrayLike, conductivity: float = 0.0, base: float = 0.0, top: float = 0.0
+    ) -> NDArray[np.float64]:
+        """Derivative of the potential at fixed head (m, any shape) along changes of conductivity, base and top."""
+        depth = np.maximum(np.asarray(head, dtype=float) - self.base, 0.0)
+        change = conductivity / self.conductivity * self.potential(head) - base * self.conductivity * depth
+        if self.top is not None:
+            change = change + top * self.conductivity * np.maximum(depth - self.thickness, 0.0)
+        return change

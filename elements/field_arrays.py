@@ -93,7 +93,7 @@ def ring_arrays(areas: list[RechargeArea], x0: float, y0: float) -> tuple[Floats
 
 
 def _ring_moments(z: np.ndarray) -> np.ndarray:
-    """int z^k dA over the polygon z (n,) = (1/2i) contour integral of conj(z) z^k dz, exact by Gauss rule."""
+    """Int z^k dA over the polygon z (n,) = (1/2i) contour integral of conj(z) z^k dz, exact by Gauss rule."""
     nodes, weights = np.polynomial.legendre.leggauss(N_RING_MOMENT // 2 + 2)
     step = np.roll(z, -1) - z
     at = z[:, None] + step[:, None] * 0.5 * (nodes + 1.0)

@@ -25,7 +25,7 @@ NEAR2 = NEAR * NEAR
 
 @kernel
 def panel_place(x, y, panel, p):
-    """tau and 1 - tau of the point on panel p, each from its own end."""
+    """Tau and 1 - tau of the point on panel p, each from its own end."""
     direction = complex(2.0 * panel[p, 6], 2.0 * panel[p, 7])
     tau = complex(x - panel[p, 0], y - panel[p, 1]) / direction
     rest = complex(panel[p, 2] - x, panel[p, 3] - y) / direction

@@ -66,7 +66,7 @@ def legendre_q(zm1, zp1, n_max, q):
 
 @kernel
 def _root(tau, kind):
-    """zeta = tau^(1/kind), the principal root; kind 0 (tip) takes the square root."""
+    """Zeta = tau^(1/kind), the principal root; kind 0 (tip) takes the square root."""
     if kind == 1:
         return tau
     if kind == 3:
@@ -126,7 +126,7 @@ def near_potentials(kind, tau, one_minus_tau, n_coef, q, out):
 
 @kernel
 def near_derivatives(kind, tau, one_minus_tau, n_coef, q, out):
-    """int P_n / (tau - tau') du of each order into out (n_coef,) complex: dOmega/dz = L/(2 pi (z2 - z1)) out."""
+    """Int P_n / (tau - tau') du of each order into out (n_coef,) complex: dOmega/dz = L/(2 pi (z2 - z1)) out."""
     if abs(tau) < TINY:
         tau = complex(TINY, 0.0)
     if abs(one_minus_tau) < TINY:

@@ -214,8 +214,8 @@ def _one_stage(
         ends_here = count == 1 and isinstance(lines[m], Stream)
         if gap > (MOST_STEP if ends_here else SAME_STAGE):
             raise GeometryError(
-                f"{lines[m].name!r} ({own:.3f} m) and {lines[decides].name!r} ({stage:.3f} m) give one point two stages "
-                f"at {place}; an infinite flux would run between them"
+                f"{lines[m].name!r} ({own:.3f} m) and {lines[decides].name!r} ({stage:.3f} m) give one point two "
+                f"stages at {place}; an infinite flux would run between them"
             )
         if gap > SAME_STAGE:
             notes.append(
