@@ -42,8 +42,9 @@ def potentials(state: State, probe: Probe) -> Floats:
 
 
 def unknown_change(state: State, change: Setting) -> Floats:
-    """dx (n + 1,) for a change of the setting; ``change`` holds differences in every field but ``aquifer``,
-    whose conductivity, base and top are differences too (see ``difference``)."""
+    """Dx (n + 1,) for a change of the setting; ``change`` holds differences in every field but ``aquifer``,
+    whose conductivity, base and top are differences too (see ``difference``).
+    """
     system, setting = state.system, state.setting
     aquifer, d_aquifer = setting.aquifer, change.aquifer
     condition = system.mesh.condition[system.rows.panel]
@@ -107,7 +108,8 @@ def head_change(state: State, probe: Probe, change: Setting, d_phi: Floats) -> F
 
 def unit_source_fields(places: Places, state: State, x: Floats, y: Floats) -> list[FlowField]:
     """Response G of the potential to a unit injection (1 m3/d) at each map point x, y (k,), all boundary conditions
-    homogeneous (linear in the tangent of the state), without the singular part at the source itself."""
+    homogeneous (linear in the tangent of the state), without the singular part at the source itself.
+    """
     system = state.system
     condition = system.mesh.condition[system.rows.panel]
     at_rows = np.zeros((system.rows.z.size, x.size))

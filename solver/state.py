@@ -22,7 +22,7 @@ from .system import (
 )
 
 MOST_STEPS = 40
-SETTLED = 1e-9  # m of head: a Newton step smaller than this ends the iteration
+SETTLED = 1e-7  # m of head: a Newton step smaller than this ends the iteration (the next would be its square)
 
 
 class NotSolvedError(ArithmeticError):
@@ -48,8 +48,8 @@ class State:
 def solve_state(system: System, setting: Setting, like: State | None = None) -> State:
     """Strengths that meet every row best and every side condition exactly.
 
-    like: a state of the same system whose factor may serve again (the weights of rows need not follow a small
-    change of the transmissivity); used where no bed makes the rows change.
+    like: a state of the same system near by. Its factor serves again where no bed makes the rows change (the
+    weights of rows need not follow a small change of the transmissivity); else Newton starts from it.
 
     Raises NotSolvedError when the iteration of leaky beds does not settle, or the conditions do not fix the field.
     """
@@ -73,6 +73,9 @@ def solve_state(system: System, setting: Setting, like: State | None = None) -> 
     bottom = _bottoms(system, setting, stage)[bed]
     phi = aquifer.potential(stage)[bed]
     x = np.zeros(matrix.shape[1])
+    if like is not None:
+        x = like.x
+        phi = system.basis[bed] @ x + given[bed]
     for step in range(1, MOST_STEPS + 1):
         head = aquifer.head(phi)
         thick = np.maximum(aquifer.saturated_thickness(phi), 1e-3 * _typical(setting, stage))
@@ -83,7 +86,7 @@ def solve_state(system: System, setting: Setting, like: State | None = None) -> 
         previous, x = x, factor.solve(right_rows, right)
         phi = system.basis[bed] @ x + given[bed]
         moved = float(abs(weight * (system.basis @ (x - previous))).max())
-        if step > 1 and moved < SETTLED:
+        if (step > 1 or like is not None) and moved < SETTLED:
             break
     else:
         raise NotSolvedError(f"the leaky stream beds did not settle in {MOST_STEPS} steps (last change {moved:.2g} m)")

@@ -1,0 +1,289 @@
+"""The fit of a site's numbers to levels and gaugings, by generalised least squares with priors.
+
+    minimise (y - f(p))' Sigma^-1 (y - f(p)) + (p - m)' P^-1 (p - m),   Sigma = scale^2 (D + s^2 J R J')
+
+by Gauss-Newton with the analytic Jacobian. D: variance of readings, with blocks where a group shares a datum. The
+scale is estimated with the fit, drawn towards 1 by ``PRIOR_READINGS`` pseudo-readings, and the intervals are
+Student's t with the degrees of freedom that leaves. Names: generalised least squares (Aitken 1935); uneven ground by
+``ground``.
+"""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+import scipy.linalg
+import scipy.stats
+
+from ..elements.field_arrays import Floats
+from .balance import upstream_take
+from .inputs import Inputs, Parameter, Solved, response, solve_inputs, tangent, with_values
+from .sensitivity import Probe, head_change, make_probe, potential_change, potentials
+from .state import NotSolvedError
+from .system import System
+
+PRIOR_READINGS = 4.0  # weight of "the stated errors are right" against the residuals when the scale is estimated
+MOST_STEPS = 40
+LEAST_SCALE = 0.1
+
+
+@dataclass(frozen=True)
+class Readings:
+    """What was measured: levels at map points x, y (k,) (m) with heads and sd (m), datum groups; gaugings."""
+
+    names: tuple[str, ...]
+    x: Floats
+    y: Floats
+    head: Floats
+    sd: Floats
+    datum: tuple[str | None, ...] = ()
+    datum_sd: tuple[tuple[str, float], ...] = ()
+    gauging_names: tuple[str, ...] = ()
+    gauging_line: tuple[int, ...] = ()
+    gauging_distance: tuple[float, ...] = ()  # m from the source
+    gauging_start: tuple[tuple[int, ...], ...] = ()  # indices of parameters added to the gain (starts_with)
+    gauging_given: tuple[float, ...] = ()  # m3/d known to enter at the source
+    gauging_flow: tuple[float, ...] = ()  # m3/d
+    gauging_sd: tuple[float, ...] = ()
+
+    @property
+    def values(self) -> Floats:
+        """All measured values (n,): heads (m), then flows (m3/d)."""
+        return np.concatenate([self.head, np.array(self.gauging_flow, dtype=float)])
+
+    def reading_covariance(self) -> Floats:
+        """D (n, n): variances of the readings, and of datums that a group of levels shares."""
+        out = np.diag(np.concatenate([self.sd, np.array(self.gauging_sd, dtype=float)]) ** 2)
+        shared = dict(self.datum_sd)
+        for i, a in enumerate(self.datum):
+            for j, b in enumerate(self.datum):
+                if a is not None and a == b:
+                    out[i, j] += shared.get(a, 0.0) ** 2
+        return out
+
+
+@dataclass(frozen=True)
+class FitResult:
+    """A fitted site.
+
+    theta, covariance: (log) parameters and their posterior; informed (p,): 1 - posterior/prior variance; residuals,
+    leverage, standardized (n,) in the order of ``Readings.values``; scale of Sigma; dof of its t distribution;
+    jacobian (n, p); sigma (n, n) with the scale in; misfit_own: weighted misfit with the readings' own errors alone, its
+    degrees of freedom and the probability of a larger one.
+    """
+
+    parameters: tuple[Parameter, ...]
+    theta: Floats
+    covariance: Floats
+    informed: Floats
+    computed: Floats
+    residuals: Floats
+    standardized: Floats
+    leverage: Floats
+    scale: float
+    dof: float
+    jacobian: Floats
+    sigma: Floats
+    own_misfit: float
+    own_dof: float
+    own_probability: float
+    steps: int
+    solved: Solved
+
+    def value(self, k: int) -> float:
+        """Parameter k in its natural unit."""
+        return float(np.exp(self.theta[k])) if self.parameters[k].log else float(self.theta[k])
+
+    def sd(self, k: int) -> float:
+        """Posterior sd of parameter k in its natural unit (of the logarithm times the value for a logarithmic one)."""
+        sd = float(np.sqrt(self.covariance[k, k]))
+        return self.value(k) * sd if self.parameters[k].log else sd
+
+    def interval(self, k: int, share: float = 0.9) -> tuple[float, float]:
+        """Central interval of parameter k that holds it with the stated probability (Student's t)."""
+        reach = float(scipy.stats.t.ppf(0.5 + 0.5 * share, self.dof)) * float(np.sqrt(self.covariance[k, k]))
+        ends = self.theta[k] - reach, self.theta[k] + reach
+        return (float(np.exp(ends[0])), float(np.exp(ends[1]))) if self.parameters[k].log else ends
+
+
+@dataclass(frozen=True)
+class _Model:
+    system: System
+    inputs: Inputs
+    parameters: tuple[Parameter, ...]
+    readings: Readings
+    probe: Probe
+    takes: Floats  # (g, n + 1) upstream take of every gauging
+
+    def at(self, theta: Floats, like: Solved | None) -> tuple[Solved, Floats]:
+        solved = solve_inputs(self.system, with_values(self.inputs, self.parameters, theta), like)
+        heads = solved.state.setting.aquifer.head(potentials(solved.state, self.probe))
+        flows = self.takes @ solved.state.x + np.array(self.readings.gauging_given)
+        for g, members in enumerate(self.readings.gauging_start):
+            flows[g] += sum(np.exp(theta[k]) if self.parameters[k].log else theta[k] for k in members)
+        return solved, np.concatenate([heads, flows])
+
+    def jacobian(self, solved: Solved, theta: Floats) -> Floats:
+        out = np.zeros((self.readings.values.size, theta.size))
+        n_levels = self.readings.head.size
+        for k, parameter in enumerate(self.parameters):
+            change, dx = response(solved, tangent(solved, parameter, float(theta[k])))
+            d_phi = potential_change(solved.state, self.probe, change, dx)
+            out[:n_levels, k] = head_change(solved.state, self.probe, change, d_phi)
+            out[n_levels:, k] = self.takes @ dx
+            for g, members in enumerate(self.readings.gauging_start):
+                if k in members:
+                    out[n_levels + g, k] += np.exp(theta[k]) if parameter.log else 1.0
+        return out
+
+
+def make_model(
+    system: System, inputs: Inputs, parameters: Sequence[Parameter], readings: Readings, like: Solved
+) -> _Model:
+    """What the fit evaluates, with all matrices that do not depend on the parameters."""
+    probe = make_probe(like.state, readings.x, readings.y)
+    pairs = zip(readings.gauging_line, readings.gauging_distance, strict=True)
+    takes = [upstream_take(system.mesh, line, distance) for line, distance in pairs]
+    empty = np.zeros((0, system.mesh.n_unknown + 1))
+    return _Model(system, inputs, tuple(parameters), readings, probe, np.array(takes) if takes else empty)
+
+
+def fit(
+    system: System,
+    inputs: Inputs,
+    parameters: Sequence[Parameter],
+    readings: Readings,
+    ground: Floats,
+    *,
+    start: Floats | None = None,
+) -> FitResult:
+    """Fit parameters (p,) to readings (n,) with the covariance ``ground`` (k, k) (m2) of uneven ground at the levels.
+
+    Raises NotSolvedError where no step lowers the misfit to a settled place.
+    """
+    theta = np.array([p.mean for p in parameters]) if start is None else start.copy()
+    solved = solve_inputs(system, with_values(inputs, parameters, theta))
+    model = make_model(system, inputs, parameters, readings, solved)
+    own = readings.reading_covariance()
+    sigma0 = own.copy()
+    sigma0[: readings.head.size, : readings.head.size] += ground
+    theta, solved, steps = _settle(model, theta, sigma0, 1.0, solved)
+    scale, dof = 1.0, np.inf
+    for _ in range(30):
+        jacobian = model.jacobian(solved, theta)
+        covariance = _posterior(jacobian, scale**2 * sigma0, parameters)
+        _, computed = model.at(theta, solved)
+        new_scale, dof = _scale(readings.values - computed, sigma0, jacobian, covariance, scale)
+        settled = abs(new_scale - scale) < 1e-4 * scale
+        scale = new_scale
+        theta, solved, more = _settle(model, theta, sigma0, scale, solved)
+        steps += more
+        if settled:
+            break
+    sigma = scale**2 * sigma0
+    jacobian = model.jacobian(solved, theta)
+    covariance = _posterior(jacobian, sigma, parameters)
+    _, computed = model.at(theta, solved)
+    residuals = readings.values - computed
+    leverage, standardized = _diagnostics(residuals, sigma, jacobian, covariance)
+    own_theta, own_solved, _ = _settle(model, theta, own, 1.0, solved)
+    own_misfit, own_dof = _own_misfit(model, own_theta, own_solved, own)
+    informed = np.array([1.0 if np.isinf(p.sd) else 1.0 - covariance[k, k] / p.sd**2 for k, p in enumerate(parameters)])
+    probability = float(scipy.stats.chi2.sf(own_misfit, own_dof)) if own_dof > 0 else np.nan
+    return FitResult(
+        tuple(parameters), theta, covariance, informed, computed, residuals, standardized, leverage, scale, dof, jacobian,
+        sigma, own_misfit, own_dof, probability, steps, solved,
+    )  # fmt: skip
+
+
+def _precision(parameters: Sequence[Parameter]) -> Floats:
+    return np.array([0.0 if np.isinf(p.sd) else 1.0 / p.sd**2 for p in parameters])
+
+
+def _posterior(jacobian: Floats, sigma: Floats, parameters: Sequence[Parameter]) -> Floats:
+    """Posterior covariance (p, p); raises NotSolvedError where data and priors leave a direction open."""
+    if jacobian.shape[1] == 0:
+        return np.zeros((0, 0))
+    information = jacobian.T @ np.linalg.solve(sigma, jacobian) + np.diag(_precision(parameters))
+    try:
+        return scipy.linalg.cho_solve(scipy.linalg.cho_factor(information), np.eye(len(parameters)))
+    except np.linalg.LinAlgError:
+        free = ", ".join(p.name for p in parameters if np.isinf(p.sd))
+        raise NotSolvedError(
+            f"the levels do not fix every free value ({free}): give an estimate with a spread"
+        ) from None
+
+
+def _objective(model: _Model, theta: Floats, whitener: Floats, like: Solved) -> tuple[float, Solved, Floats]:
+    solved, computed = model.at(theta, like)
+    r = scipy.linalg.solve_triangular(whitener, model.readings.values - computed, lower=True)
+    prior = (theta - np.array([p.mean for p in model.parameters])) ** 2 * _precision(model.parameters)
+    return float(r @ r + prior.sum()), solved, computed
+
+
+def _settle(model: _Model, theta: Floats, sigma0: Floats, scale: float, solved: Solved) -> tuple[Floats, Solved, int]:
+    """Gauss-Newton with step halving to a settled minimum of the penalised misfit."""
+    if theta.size == 0:
+        return theta, solved, 0
+    whitener = scale * np.linalg.cholesky(sigma0) if sigma0.size else sigma0
+    precision = _precision(model.parameters)
+    mean = np.array([p.mean for p in model.parameters])
+    value, solved, computed = _objective(model, theta, whitener, solved)
+    for step in range(1, MOST_STEPS + 1):
+        jacobian = scipy.linalg.solve_triangular(whitener, model.jacobian(solved, theta), lower=True)
+        r = scipy.linalg.solve_triangular(whitener, model.readings.values - computed, lower=True)
+        information = jacobian.T @ jacobian + np.diag(precision)
+        gradient = jacobian.T @ r - precision * (theta - mean)
+        try:
+            move = scipy.linalg.cho_solve(scipy.linalg.cho_factor(information), gradient)
+        except np.linalg.LinAlgError:
+            _posterior(jacobian, np.eye(r.size), model.parameters)
+            raise
+        promised = float(gradient @ move)  # fall of the objective that the linear model promises
+        if promised < 1e-10 * (1.0 + value):
+            return theta, solved, step
+        share = 1.0
+        while True:
+            try:
+                trial = _objective(model, theta + share * move, whitener, solved)
+            except (NotSolvedError, ValueError):
+                trial = (np.inf, solved, computed)
+            if trial[0] < value:
+                break
+            share *= 0.5
+            if share < 1e-4:
+                return theta, solved, step  # no step lowers it any more: rounding of the solve
+        theta = theta + share * move
+        value, solved, computed = trial
+    raise NotSolvedError(f"the fit did not settle in {MOST_STEPS} steps; are the priors far from the levels?")
+
+
+def _scale(r: Floats, sigma0: Floats, jacobian: Floats, covariance: Floats, scale: float) -> tuple[float, float]:
+    """Scale of Sigma and its degrees of freedom: residual misfit over readings less what the parameters took up."""
+    if r.size == 0:
+        return 1.0, np.inf
+    inverse = np.linalg.inv(sigma0)
+    taken = float(np.trace(jacobian @ covariance @ jacobian.T @ inverse)) / scale**2 if jacobian.size else 0.0
+    dof = max(r.size - taken, 0.0) + PRIOR_READINGS
+    return max(float(np.sqrt((r @ inverse @ r + PRIOR_READINGS) / dof)), LEAST_SCALE), dof
+
+
+def _diagnostics(r: Floats, sigma: Floats, jacobian: Floats, covariance: Floats) -> tuple[Floats, Floats]:
+    """Leverage (n,) of each reading and its residual over the sd that the residual should have."""
+    if r.size == 0:
+        return np.zeros(0), np.zeros(0)
+    spread = jacobian @ covariance @ jacobian.T if jacobian.size else np.zeros_like(sigma)
+    leverage = np.diag(np.linalg.solve(sigma, spread))
+    return leverage, r / np.sqrt(np.maximum(np.diag(sigma) - np.diag(spread), 1e-12 * np.diag(sigma)))
+
+
+def _own_misfit(model: _Model, theta: Floats, solved: Solved, own: Floats) -> tuple[float, float]:
+    """Misfit weighted with the readings' own errors alone, and its degrees of freedom."""
+    if own.size == 0:
+        return 0.0, 0.0
+    _, computed = model.at(theta, solved)
+    r = model.readings.values - computed
+    jacobian = model.jacobian(solved, theta)
+    covariance = _posterior(jacobian, own, model.parameters)
+    taken = float(np.trace(jacobian @ covariance @ jacobian.T @ np.linalg.inv(own))) if jacobian.size else 0.0
+    return float(r @ np.linalg.solve(own, r)), max(r.size - taken, 0.0)
