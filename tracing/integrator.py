@@ -1,0 +1,297 @@
+"""One particle through a flow field: Dormand-Prince 5(4) with step control, captures and stated endings.
+
+Position x, y and the potential are integrated together: d(x, y)/dt = +-Q/(n b), dPhi/dt = -+|Q|^2/(n b), with the
+saturated thickness b taken from the potential on the way, so that no potential is evaluated in between. A step
+never passes a line: one whose chord crosses a line is taken again, shorter, until it lands within LAND of it.
+
+Coefficients: Dormand & Prince (1980); dense output of order 4: Shampine (1986).
+"""
+
+import numpy as np
+
+from ..elements.jit import kernel, parallel_kernel, prange
+from ..elements.kernels_field import discharge_at, potential_at, recharge_at
+from ..elements.kernels_line import N_WORK
+from .endings import Ending
+
+A = np.array(
+    [
+        [0.0, 0.0, 0.0, 0.0, 0.0, 0.0],
+        [1 / 5, 0.0, 0.0, 0.0, 0.0, 0.0],
+        [3 / 40, 9 / 40, 0.0, 0.0, 0.0, 0.0],
+        [44 / 45, -56 / 15, 32 / 9, 0.0, 0.0, 0.0],
+        [19372 / 6561, -25360 / 2187, 64448 / 6561, -212 / 729, 0.0, 0.0],
+        [9017 / 3168, -355 / 33, 46732 / 5247, 49 / 176, -5103 / 18656, 0.0],
+        [35 / 384, 0.0, 500 / 1113, 125 / 192, -2187 / 6784, 11 / 84],
+    ]
+)
+E = np.array([-71 / 57600, 0.0, 71 / 16695, -71 / 1920, 17253 / 339200, -22 / 525, 1 / 40])
+P = np.array(
+    [
+        [1.0, -8048581381 / 2820520608, 8663915743 / 2820520608, -12715105075 / 11282082432],
+        [0.0, 0.0, 0.0, 0.0],
+        [0.0, 131558114200 / 32700410799, -68118460800 / 10900136933, 87487479700 / 32700410799],
+        [0.0, -1754552775 / 470086768, 14199869525 / 1410260304, -10690763975 / 1880347072],
+        [0.0, 127303824393 / 49829197408, -318862633887 / 49829197408, 701980252875 / 199316789632],
+        [0.0, -282668133 / 205662961, 2019193451 / 616988883, -1453857185 / 822651844],
+        [0.0, 40617522 / 29380423, -110615467 / 29380423, 69997945 / 29380423],
+    ]
+)
+LAND = 1e-5  # m: this near to a line a particle has arrived
+ASIDE = 1e-3  # m: where the flow on both banks is looked at, and where a particle goes on
+MOST_REDO = 200
+
+WELL, STREAM = int(Ending.WELL), int(Ending.STREAM)
+DRAWN_AREA, STAGNATION, TIME = int(Ending.DRAWN_AREA), int(Ending.STAGNATION), int(Ending.TIME)
+STEPS, DRY, NOT_FINITE = int(Ending.STEPS), int(Ending.DRY), int(Ending.NOT_FINITE)
+
+
+@kernel
+def _thickness(phi, conductivity, full):
+    """Saturated thickness (m) at a potential; 0 where dry."""
+    return min(np.sqrt(2.0 * max(phi, 0.0) / conductivity), full)
+
+
+@kernel
+def first_crossing(x0, y0, x1, y1, segment):
+    """Share of the chord at the first segment crossed, and that segment's index; (2, -1) if none."""
+    best = 2.0
+    which = -1
+    dx = x1 - x0
+    dy = y1 - y0
+    low_x = min(x0, x1)
+    high_x = max(x0, x1)
+    low_y = min(y0, y1)
+    high_y = max(y0, y1)
+    for k in range(segment.shape[0]):
+        ax = segment[k, 0]
+        ay = segment[k, 1]
+        bx = segment[k, 2]
+        by = segment[k, 3]
+        if max(ax, bx) < low_x or min(ax, bx) > high_x or max(ay, by) < low_y or min(ay, by) > high_y:
+            continue
+        ex = bx - ax
+        ey = by - ay
+        cross = dx * ey - dy * ex
+        if cross == 0.0:
+            continue
+        s = ((ax - x0) * ey - (ay - y0) * ex) / cross
+        u = ((ax - x0) * dy - (ay - y0) * dx) / cross
+        if 0.0 <= s <= 1.0 and -1e-9 <= u <= 1.0 + 1e-9 and s < best:
+            best = s
+            which = k
+    return best, which
+
+
+@kernel
+def follow(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks, points, share, work):
+    """Follow one particle from x, y (local m), sign +1 with the flow, -1 against it.
+
+    medium: conductivity, full thickness, porosity. marks (k,): ascending times (d) whose positions go into
+    at_marks (k, 2); points (m, 3): x, y, t of the start and of every step; share (l + 1,): of the water that
+    arrives at the start, what each line gave (the last one: what is still on the way at the end), followed against
+    the flow only. Returns the number of points, the ending, the well or line it names (-1 none), and steps tried.
+    """
+    conductivity, full, porosity = medium[0], medium[1], medium[2]
+    rate = np.empty((7, 3))
+    t = 0.0
+    phi = potential_at(x, y, f, work)
+    n_points = 1
+    points[0, 0] = x
+    points[0, 1] = y
+    points[0, 2] = 0.0
+    next_mark = 0
+    left = 1.0  # share of the water not yet traced to a source
+    n_tried = 0
+    fresh = False  # rate[0] holds the derivative at the current place
+    h = 0.0
+    x_new = x
+    y_new = y
+    reason = 0
+    named = -1
+    redo = 0
+    box = obstacles.box
+    size = max(box[1] - box[0], box[3] - box[2])
+    recharged = f.ring.shape[0] > 0
+    infiltration = recharge_at(x, y, f) if recharged else 0.0
+    while reason == 0:
+        n_tried += 1
+        if n_points == points.shape[0] or redo > MOST_REDO:
+            reason = STEPS
+            break
+        bad = 0
+        for stage in range(7):
+            if stage == 0 and fresh:
+                continue
+            sx = x
+            sy = y
+            sp = phi
+            for j in range(stage):
+                sx += h * A[stage, j] * rate[j, 0]
+                sy += h * A[stage, j] * rate[j, 1]
+                sp += h * A[stage, j] * rate[j, 2]
+            qx, qy = discharge_at(sx, sy, f, work)
+            slow = porosity * _thickness(sp, conductivity, full)
+            if slow <= 0.0:
+                bad = DRY
+                break
+            rate[stage, 0] = sign * qx / slow
+            rate[stage, 1] = sign * qy / slow
+            rate[stage, 2] = -sign * (qx * qx + qy * qy) / slow
+            if stage == 0:
+                speed = np.sqrt(rate[0, 0] ** 2 + rate[0, 1] ** 2)
+                if speed * slow <= q_rest:
+                    bad = STAGNATION
+                    break
+                if h == 0.0:
+                    h = 1e-4 * size / speed
+                reach = 0.05 * size
+                for w in range(f.wells.shape[0]):
+                    gap = np.sqrt((x - f.wells[w, 0]) ** 2 + (y - f.wells[w, 1]) ** 2)
+                    reach = min(reach, max(0.5 * gap, 0.5 * f.wells[w, 3]))
+                h = min(h, reach / speed, t_max - t)
+        if bad != 0:
+            if bad == STAGNATION or not fresh or h * speed < 1e-6:
+                reason = bad
+                break
+            h *= 0.2  # a trial stage fell dry: come nearer before saying so
+            continue
+        x_new, y_new, phi_new = sx, sy, sp
+        ex = 0.0
+        ey = 0.0
+        for j in range(7):
+            ex += E[j] * rate[j, 0]
+            ey += E[j] * rate[j, 1]
+        error = h * np.sqrt(ex * ex + ey * ey)
+        if not np.isfinite(error + x_new + y_new):
+            reason = NOT_FINITE
+            break
+        fresh = True
+        grow = 5.0 if error == 0.0 else min(5.0, max(0.2, 0.9 * (tol / error) ** 0.2))
+        if error > tol and h * speed > 1e-9:
+            h *= min(grow, 0.9)
+            continue
+        crossing, segment = first_crossing(x, y, x_new, y_new, obstacles.segment)
+        if segment >= 0:
+            chord = np.sqrt((x_new - x) ** 2 + (y_new - y) ** 2)
+            if crossing * chord > LAND:
+                h *= max(crossing * (1.0 - 1e-3) - 0.3 * LAND / chord, 0.05)
+                redo += 1
+                continue
+            # arrived: what does the water do on the other bank?
+            redo = 0
+            ux = obstacles.segment[segment, 2] - obstacles.segment[segment, 0]
+            uy = obstacles.segment[segment, 3] - obstacles.segment[segment, 1]
+            length = np.sqrt(ux * ux + uy * uy)
+            nx = -uy / length
+            ny = ux / length
+            if nx * (x_new - x) + ny * (y_new - y) < 0.0:
+                nx = -nx
+                ny = -ny
+            line = obstacles.line[segment]
+            px = x + crossing * (x_new - x)
+            py = y + crossing * (y_new - y)
+            near_x, near_y = discharge_at(px - ASIDE * nx, py - ASIDE * ny, f, work)
+            far_x, far_y = discharge_at(px + ASIDE * nx, py + ASIDE * ny, f, work)
+            arriving = sign * (near_x * nx + near_y * ny)
+            leaving = sign * (far_x * nx + far_y * ny)
+            if obstacles.ending[segment] != STREAM or leaving <= 0.0 or arriving <= 0.0:
+                reason = obstacles.ending[segment]
+                named = line
+                x, y = px, py
+                points[n_points, 0] = px
+                points[n_points, 1] = py
+                points[n_points, 2] = t
+                n_points += 1
+                share[line] += left
+                left = 0.0
+                break
+            if sign < 0.0 and leaving < arriving:  # against the flow: the stream gave the difference
+                share[line] += left * (1.0 - leaving / arriving)
+                left *= leaving / arriving
+            x = px + ASIDE * nx
+            y = py + ASIDE * ny
+            phi = potential_at(x, y, f, work)
+            points[n_points, 0] = x
+            points[n_points, 1] = y
+            points[n_points, 2] = t
+            n_points += 1
+            fresh = False
+            continue
+        t_new = t + h
+        while next_mark < marks.size and marks[next_mark] <= t_new:
+            s = (marks[next_mark] - t) / h
+            mx = 0.0
+            my = 0.0
+            for j in range(7):
+                b = s * (P[j, 0] + s * (P[j, 1] + s * (P[j, 2] + s * P[j, 3])))
+                mx += b * rate[j, 0]
+                my += b * rate[j, 1]
+            at_marks[next_mark, 0] = x + h * mx
+            at_marks[next_mark, 1] = y + h * my
+            next_mark += 1
+        if recharged:
+            new_infiltration = recharge_at(x_new, y_new, f)
+            slow = porosity * 0.5 * (_thickness(phi, conductivity, full) + _thickness(phi_new, conductivity, full))
+            left *= np.exp(-0.5 * (infiltration + new_infiltration) * h / slow)
+            infiltration = new_infiltration
+        for w in range(f.wells.shape[0]):
+            r2 = (x_new - f.wells[w, 0]) ** 2 + (y_new - f.wells[w, 1]) ** 2
+            radius2 = f.wells[w, 3] ** 2
+            if r2 <= radius2 and sign * f.wells[w, 2] > 0.0:
+                r0 = (x - f.wells[w, 0]) ** 2 + (y - f.wells[w, 1]) ** 2
+                s = min(max((r0 - radius2) / (r0 - r2), 0.0), 1.0) if r0 > r2 else 1.0  # r^2 falls evenly near a well
+                x_new = x + s * (x_new - x)
+                y_new = y + s * (y_new - y)
+                t_new = t + s * h
+                reason = WELL
+                named = w
+        if x_new < box[0] or x_new > box[1] or y_new < box[2] or y_new > box[3]:
+            s = 1.0
+            if x_new < box[0]:
+                s = min(s, (box[0] - x) / (x_new - x))
+            if x_new > box[1]:
+                s = min(s, (box[1] - x) / (x_new - x))
+            if y_new < box[2]:
+                s = min(s, (box[2] - y) / (y_new - y))
+            if y_new > box[3]:
+                s = min(s, (box[3] - y) / (y_new - y))
+            x_new = x + s * (x_new - x)
+            y_new = y + s * (y_new - y)
+            t_new = t + s * h
+            reason = DRAWN_AREA
+        x, y, t, phi = x_new, y_new, t_new, phi_new
+        points[n_points, 0] = x
+        points[n_points, 1] = y
+        points[n_points, 2] = t
+        n_points += 1
+        redo = 0
+        if reason == 0 and t >= t_max:
+            reason = TIME
+        for j in range(3):
+            rate[0, j] = rate[6, j]
+        speed = np.sqrt(rate[0, 0] ** 2 + rate[0, 1] ** 2)
+        if reason == 0 and speed * porosity * _thickness(phi, conductivity, full) <= q_rest:
+            reason = STAGNATION
+        reach = 0.05 * size
+        for w in range(f.wells.shape[0]):
+            gap = np.sqrt((x - f.wells[w, 0]) ** 2 + (y - f.wells[w, 1]) ** 2)
+            reach = min(reach, max(0.5 * gap, 0.5 * f.wells[w, 3]))
+        if reason == 0:
+            h = min(h * grow, reach / speed, t_max - t)
+    while next_mark < marks.size:
+        at_marks[next_mark, 0] = x
+        at_marks[next_mark, 1] = y
+        next_mark += 1
+    share[share.size - 1] += left
+    return n_points, reason, named, n_tried
+
+
+@parallel_kernel
+def follow_all(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks, points, share, result):
+    """Follow particles x, y (n,); outputs as in ``follow`` with a first axis n; result (n, 4) its return values."""
+    for i in prange(x.size):
+        work = np.empty((2, N_WORK), np.complex128)
+        result[i, 0], result[i, 1], result[i, 2], result[i, 3] = follow(
+            x[i], y[i], sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks[i], points[i], share[i], work
+        )
