@@ -1,0 +1,226 @@
+"""Capture zone and time zones of a well: below which places some water, at some depth, goes to the well.
+
+Pathlines are followed against the flow from a circle round the screen. Neighbours that part are joined by further
+pathlines between them, until they stay close or start closer than rounding tells apart: those part at a dividing
+line (a stagnation point lies between them). The zone is the ground swept by the neighbours that stay together; its
+border is the front of their ends and, at every parting, the two pathlines on both sides of the dividing line.
+"""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+import shapely
+from numpy.typing import NDArray
+
+from ..elements.flow_field import FlowField
+from .endings import Ending
+from .obstacles import Obstacles
+from .pathlines import Pathlines, trace
+
+Floats = NDArray[np.float64]
+FIRST_PATHS = 72
+MOST_PATHS = 1500
+PARTED = 1e-11  # rad: neighbours that start this close and still part have a dividing line between them
+SPREAD = 0.03  # of the zone's size: neighbours farther apart get another pathline between them
+N_MARKS = 48
+STRETCH = 1.0001  # start on a circle just outside the screen
+
+
+@dataclass(frozen=True)
+class TimeZone:
+    """Ground from which water reaches the well within ``days``."""
+
+    days: float
+    polygon: shapely.Geometry
+    area: float
+
+
+@dataclass(frozen=True)
+class CaptureZone:
+    """Zone of one well.
+
+    polygon, area (m2): the whole zone inside the clip; open: it leaves the area in which water was followed;
+    supply: share of the rate by source ("recharge", each line's name, "beyond the map"); times: as asked; endings:
+    how many pathlines ended why; parted: number of dividing lines met.
+    """
+
+    polygon: shapely.Geometry
+    area: float
+    open: bool
+    supply: dict[str, float]
+    times: tuple[TimeZone, ...]
+    endings: dict[str, int]
+    parted: int
+    paths: Pathlines
+
+
+def capture_zone(
+    flow: FlowField, well: int, obstacles: Obstacles, times: Sequence[float] = (), clip: shapely.Geometry | None = None
+) -> CaptureZone:
+    """Zone of well number ``well`` of the field, and its time zones (d).
+
+    obstacles: lines at which water can come from, and the box in which it is followed; clip: what the polygons are
+    cut to (the drawn area). Raises ValueError for a well that does not pump.
+    """
+    wx, wy, rate, radius = flow.arrays.wells[well]
+    if rate <= 0.0:
+        raise ValueError("only a pumping well has a capture zone")
+    centre = np.array([wx + flow.origin[0], wy + flow.origin[1]])
+    circle = radius * STRETCH
+    marks = _marks(flow, obstacles, rate, times)
+    angles = 2.0 * np.pi * (np.arange(FIRST_PATHS) + 0.5) / FIRST_PATHS
+    paths = _follow(flow, centre, circle, angles, obstacles, marks)
+    while angles.size < MOST_PATHS:
+        between = _needed(angles, paths)
+        if between.size == 0:
+            break
+        more = _follow(flow, centre, circle, between, obstacles, marks)
+        angles, paths = _merged(angles, paths, between, more)
+    apart = _apart(angles, paths)
+    whole = _polygon(paths, apart, None)
+    asked = []
+    for days in times:
+        k = int(np.flatnonzero(marks == days)[0])
+        ground = _clipped(_polygon(paths, apart, k), clip)
+        asked.append(TimeZone(float(days), ground, float(ground.area)))
+    leaves = bool(np.any(paths.endings == Ending.DRAWN_AREA))
+    clipped = _clipped(whole, clip)
+    is_open = leaves or clipped.area < whole.area * (1 - 1e-9)
+    supply = _supply(flow, centre, circle, angles, paths)
+    return CaptureZone(
+        clipped, float(clipped.area), is_open, supply, tuple(asked), paths.counts(), int(apart.sum()), paths
+    )
+
+
+def _marks(flow: FlowField, obstacles: Obstacles, rate: float, times: Sequence[float]) -> Floats:
+    """Times at which neighbours are compared, from the screen to long after anything moves, and the asked ones."""
+    x0, x1, y0, y1 = obstacles.box
+    full = flow.aquifer.thickness
+    wells = flow.arrays.wells
+    phi = flow.potential(wells[:, 0] + flow.origin[0], wells[:, 1] + flow.origin[1])
+    thick = min(full, float(np.max(flow.aquifer.saturated_thickness(phi))) if not np.isfinite(full) else full)
+    slow = flow.aquifer.porosity * max(thick, 0.1)
+    whole = slow * (x1 - x0) * (y1 - y0) / rate  # time in which the well empties the box
+    return np.unique(
+        np.concatenate([np.geomspace(1e-5 * whole, 100.0 * whole, N_MARKS), np.asarray(times, dtype=float)])
+    )
+
+
+def _follow(
+    flow: FlowField, centre: Floats, circle: float, angles: Floats, obstacles: Obstacles, marks: Floats
+) -> Pathlines:
+    x, y = centre[0] + circle * np.cos(angles), centre[1] + circle * np.sin(angles)
+    return trace(flow, x, y, direction=-1, lines=obstacles, times=marks)
+
+
+def _steps(angles: Floats) -> Floats:
+    """Angle from each path to the next, the last to the first."""
+    return np.diff(angles, append=angles[0] + 2.0 * np.pi)
+
+
+def _gaps(paths: Pathlines) -> Floats:
+    """Largest distance (m) of each path to the next one at equal times."""
+    at = paths.at_marks
+    return np.asarray(np.hypot(*np.moveaxis(np.roll(at, -1, axis=0) - at, -1, 0)).max(axis=1))
+
+
+def _size(paths: Pathlines) -> float:
+    at = paths.at_marks[:, -1]
+    return float(np.hypot(np.ptp(at[:, 0]), np.ptp(at[:, 1])))
+
+
+def _limit(paths: Pathlines) -> float:
+    ends = np.array([p[:, :2].min(axis=0) for p in paths.points] + [p[:, :2].max(axis=0) for p in paths.points])
+    return SPREAD * float(np.hypot(np.ptp(ends[:, 0]), np.ptp(ends[:, 1])))
+
+
+def _needed(angles: Floats, paths: Pathlines) -> Floats:
+    """Angles half-way between neighbours that part and still start apart."""
+    steps = _steps(angles)
+    wide = (_gaps(paths) > _limit(paths)) & (steps > PARTED)
+    return np.asarray((angles + 0.5 * steps)[wide])
+
+
+def _apart(angles: Floats, paths: Pathlines) -> NDArray[np.bool_]:
+    """Paths with a dividing line between them and the next."""
+    return np.asarray(_gaps(paths) > _limit(paths))
+
+
+def _merged(angles: Floats, paths: Pathlines, between: Floats, more: Pathlines) -> tuple[Floats, Pathlines]:
+    every = np.concatenate([angles, between])
+    order = np.argsort(every, kind="stable")
+    points = paths.points + more.points
+    both = [np.concatenate(pair)[order] for pair in (
+        (paths.endings, more.endings), (paths.named, more.named), (paths.at_marks, more.at_marks),
+        (paths.share, more.share), (paths.tried, more.tried),
+    )]  # fmt: skip
+    merged = Pathlines(
+        [points[i] for i in order], both[0], both[1], paths.marks, both[2], both[3], both[4], paths.line_names
+    )
+    return every[order], merged
+
+
+def _polygon(paths: Pathlines, apart: NDArray[np.bool_], mark: int | None) -> shapely.Geometry:
+    """Ground swept up to the time of a mark, or in all (None)."""
+    ring: list[Floats] = []
+    n = len(paths.points)
+    limit = np.inf if mark is None else paths.marks[mark]
+    for i in range(n):
+        j = (i + 1) % n
+        ring.append(_end(paths, i, mark)[None, :])
+        if apart[i]:
+            out, back = _swept(paths, j, mark, limit), _swept(paths, i, mark, limit)
+            ring += _round_divide(back, out)
+    return _valid(np.concatenate(ring))
+
+
+def _end(paths: Pathlines, i: int, mark: int | None) -> Floats:
+    return np.asarray(paths.points[i][-1, :2] if mark is None else paths.at_marks[i, mark])
+
+
+def _swept(paths: Pathlines, i: int, mark: int | None, limit: float) -> Floats:
+    path = paths.points[i]
+    return np.concatenate([path[path[:, 2] < limit, :2], _end(paths, i, mark)[None, :]])
+
+
+def _round_divide(back: Floats, out: Floats) -> list[Floats]:
+    """From the end of one path back to where the two part, and out along the other: no slit to the well is left."""
+    together = 1e-6 * max(float(np.ptp(back[:, 0])), float(np.ptp(back[:, 1])), 1e-9)
+    gap_back = shapely.distance(shapely.points(back), shapely.LineString(out))
+    gap_out = shapely.distance(shapely.points(out), shapely.LineString(back))
+    first_back = int(np.argmax(gap_back > together)) if np.any(gap_back > together) else len(back) - 1
+    first_out = int(np.argmax(gap_out > together)) if np.any(gap_out > together) else len(out) - 1
+    return [back[first_back:][::-1], back[max(first_back - 1, 0)][None, :], out[first_out:]]
+
+
+def _valid(ring: Floats) -> shapely.Geometry:
+    polygon = shapely.Polygon(ring)
+    if not polygon.is_valid:
+        polygon = shapely.buffer(polygon, 0.0)
+    return polygon
+
+
+def _clipped(polygon: shapely.Geometry, clip: shapely.Geometry | None) -> shapely.Geometry:
+    return polygon if clip is None else shapely.intersection(polygon, clip)
+
+
+def _supply(flow: FlowField, centre: Floats, circle: float, angles: Floats, paths: Pathlines) -> dict[str, float]:
+    """Share of the well's rate by source: the shares of the pathlines weighted with the flow into the screen."""
+    x, y = centre[0] + circle * np.cos(angles), centre[1] + circle * np.sin(angles)
+    qx, qy = flow.discharge(x, y)
+    inward = np.maximum(-(qx * np.cos(angles) + qy * np.sin(angles)), 0.0)
+    steps = _steps(angles)
+    weight = inward * 0.5 * (steps + np.roll(steps, 1))
+    share = (weight @ paths.share) / weight.sum()
+    gone = np.isin(paths.endings, [int(Ending.DRAWN_AREA)])
+    beyond = float(weight[gone] @ paths.share[gone, -1] / weight.sum())
+    out = {name: float(s) for name, s in zip(paths.line_names, share[:-1], strict=True) if s > 0.0}
+    injected = np.isin(paths.endings, [int(Ending.WELL)])
+    if injected.any():
+        out["injected"] = float(weight[injected] @ paths.share[injected, -1] / weight.sum())
+    unknown = float(weight @ paths.share[:, -1] / weight.sum()) - beyond - out.get("injected", 0.0)
+    out["beyond the map"] = beyond
+    out["not traced to its source"] = max(unknown, 0.0)
+    out["recharge"] = 1.0 - sum(out.values())
+    return out
