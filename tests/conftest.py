@@ -1,0 +1,24 @@
+"""What all tests share: the option for longer studies, and the source tree."""
+
+from pathlib import Path
+
+import pytest
+
+
+def pytest_addoption(parser):
+    parser.addoption("--thorough", action="store_true", help="also run the longer studies")
+
+
+def pytest_collection_modifyitems(config, items):
+    if config.getoption("--thorough"):
+        return
+    skip = pytest.mark.skip(reason="a longer study: needs --thorough")
+    for item in items:
+        if item.get_closest_marker("thorough"):
+            item.add_marker(skip)
+
+
+@pytest.fixture(scope="session")
+def source_root():
+    """Folder of the package's sources, which is also the folder of the repository."""
+    return Path(__file__).resolve().parent.parent
