@@ -1,8 +1,12 @@
 """What all tests share: the option for longer studies, and the source tree."""
 
+import sys
 from pathlib import Path
 
 import pytest
+
+# the finite-element truth (fem.py, fem_mesh.py) is a tool of several tests; importlib mode adds no folder by itself
+sys.path.insert(0, str(Path(__file__).resolve().parent))
 
 
 def pytest_addoption(parser):
