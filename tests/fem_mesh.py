@@ -74,7 +74,13 @@ def build(outer, holes, lines, wells, *, size, tip, slope):
     centre = corners.mean(axis=1)
     d1, d2 = corners[:, 1] - corners[:, 0], corners[:, 2] - corners[:, 0]
     area = 0.5 * np.abs(d1[:, 0] * d2[:, 1] - d1[:, 1] * d2[:, 0])
-    keep = shapely.contains_xy(inside, centre[:, 0], centre[:, 1]) & (area > 1e-14 * size * size)
+    # three points of one straight shore make a triangle without area: it is no land
+    longest = np.max(np.sum((corners - np.roll(corners, 1, axis=1)) ** 2, axis=2), axis=1)
+    keep = shapely.contains_xy(inside, centre[:, 0], centre[:, 1]) & (area > 1e-7 * longest)
+    if abs(area[keep].sum() - inside.area) > 1e-9 * inside.area or np.any(
+        ~np.isin(np.concatenate(index), locator.simplices[keep])
+    ):
+        raise ValueError("the triangles do not cover the land")
     used = np.unique(triangles[keep])
     new = np.full(len(everything), -1)
     new[used] = np.arange(len(used))
