@@ -162,7 +162,7 @@ def solve(site):
     flows = {name: float(sources[nodes].sum()) for name, nodes in owner.items()}
     flows |= {name: float((bed_load[name] - bed[name] @ u).sum()) for name in bed}
     due = float(load.sum())  # recharge less wells
-    if flows and abs(sum(flows.values()) + due) > 1e-6 * np.abs(load).sum():
+    if flows and abs(sum(flows.values()) + due) > 1e-7 * max(np.abs(load).sum(), *map(abs, flows.values())):
         raise ValueError(f"the balance does not close: {flows} against {-due:.6g} m3/d")
     if bed and head_of(site, u).min() < site.top:
         raise ValueError("a bed needs an aquifer that stays confined: some heads lie below its top")
