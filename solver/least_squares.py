@@ -67,6 +67,8 @@ def factorise(matrix: Floats, conditions: Floats) -> Factor:
 
 def _multiply(reflectors: tuple[np.ndarray, np.ndarray], c: Floats, side: str) -> Floats:
     """Q c (side L) or c Q (side R) with Q in LAPACK's reflector form."""
+    if c.size == 0:  # no rows: a field that its side conditions fix alone
+        return c
     out, _, info = scipy.linalg.lapack.dormqr(
         side, "N", reflectors[0], reflectors[1], np.asfortranarray(c), 64 * max(c.shape)
     )

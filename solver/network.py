@@ -60,6 +60,9 @@ def make_edges(lines: Sequence[Line], origin: tuple[float, float]) -> Edges:
         for z, stage, s in _pieces(k, line, lines, origin, notes):
             ends = range(len(z) - 1)
             rows += [[z[i], z[i + 1], stage[i], stage[i + 1], k, s[i], s[i + 1], _condition(line)] for i in ends]
+    if not rows:  # wells and recharge alone: nothing to cut
+        z, real, whole, mark = (np.zeros(0, dtype=t) for t in (complex, float, np.int64, bool))
+        return Edges(z, z, real, real, whole, whole, whole, real, real, whole, mark, mark, ())
     rows = _split_at_crossings(rows, lines, origin)
     return _join(rows, lines, origin, notes)
 
