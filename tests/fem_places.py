@@ -28,7 +28,7 @@ def stated(folder):
     return scenario, waters
 
 
-def site_of(scenario, waters, true, *, hidden=(), size=60.0):
+def site_of(scenario, waters, true, *, hidden=(), size=30.0):
     """The finite-element site: stated geometry; true ground, recharge and shifts; hidden wells."""
     outer = np.array(scenario["outline"]["line"], dtype=float)
     (x0, y0), (x1, y1) = outer.min(axis=0), outer.max(axis=0)

@@ -25,12 +25,12 @@ TRUE = {
 }
 
 
-def main():
-    """Solve, write, print."""
+def main(folder=FOLDER):
+    """Solve, write levels and truth into ``folder``, print; return the solved field."""
     scenario, waters = fem_places.stated(FOLDER)
     truth = fem.solve(fem_places.site_of(scenario, waters, TRUE))
-    fem_places.write_levels(FOLDER, truth, 24, seed=3)
-    fem_places.write_truth(FOLDER, TRUE, truth)
+    fem_places.write_levels(folder, truth, 24, seed=3)
+    fem_places.write_truth(folder, TRUE, truth)
     gain = truth.gain("Sallow Beck") / 86.4
     read = gain * (1 + 0.06 * np.random.default_rng(21).standard_normal())
     print(f"the beck gains {gain:.2f} L/s, read as {read:.1f} L/s")

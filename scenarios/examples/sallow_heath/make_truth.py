@@ -26,13 +26,13 @@ TRUE = {
 }
 
 
-def main():
-    """Solve, write, print."""
+def main(folder=FOLDER):
+    """Solve, write levels and truth into ``folder``, print; return the solved field."""
     scenario, waters = fem_places.stated(FOLDER)
     hidden = fem.Well("hidden", *TRUE["hidden_well"]["at"], TRUE["hidden_well"]["pumps_m3_d"], 3.0)
     truth = fem.solve(fem_places.site_of(scenario, waters, TRUE, hidden=(hidden,)))
-    fem_places.write_levels(FOLDER, truth, 26, seed=8)
-    fem_places.write_truth(FOLDER, TRUE, truth)
+    fem_places.write_levels(folder, truth, 26, seed=8)
+    fem_places.write_truth(folder, TRUE, truth)
     gain = truth.gain("Ling Brook") / 86.4
     read = gain * (1 + 0.06 * np.random.default_rng(22).standard_normal())
     print(f"the brook gains {gain:.2f} L/s, read as {read:.1f} L/s")
