@@ -1,0 +1,105 @@
+"""Units at the edge of the program: a closed table, converted to metres and days; checked in the tests against pint.
+
+Only lengths, elevations, coordinates and pure numbers may be bare. 1 yr = 365.25 d.
+"""
+
+import re
+from dataclasses import dataclass
+
+YEAR = 365.25
+FOOT = 0.3048
+SURVEY_FOOT = 1200.0 / 3937.0
+GALLON = 231 * 0.0254**3  # US liquid gallon
+
+_LENGTH = {"m": 1.0, "km": 1000.0, "cm": 0.01, "mm": 0.001, "ft": FOOT, "ft_us": SURVEY_FOOT, "in": 0.0254}
+_TIME = {"d": 1.0, "h": 1 / 24, "min": 1 / 1440, "s": 1 / 86400, "yr": YEAR, "a": YEAR}
+_VOLUME = {"m3": 1.0, "L": 1e-3, "ML": 1e3, "ft3": FOOT**3, "gal": GALLON}
+
+UNITS: dict[str, dict[str, float]] = {
+    "length": _LENGTH,
+    "time": _TIME,
+    "speed": {f"{a}/{t}": fa / ft for a, fa in _LENGTH.items() for t, ft in _TIME.items()},
+    "rate": {f"{v}/{t}": fv / ft for v, fv in _VOLUME.items() for t, ft in _TIME.items()}
+    | {"gpm": GALLON * 1440, "cfs": FOOT**3 * 86400, "mgd": 1e6 * GALLON},
+    "discharge": {f"m2/{t}": 1 / ft for t, ft in _TIME.items()} | {f"ft2/{t}": FOOT**2 / ft for t, ft in _TIME.items()},
+    "angle": {"deg": 1.0},
+    "number": {"%": 0.01},
+}
+MODEL_UNIT = {
+    "length": "m", "time": "d", "speed": "m/d", "rate": "m3/d", "discharge": "m2/d", "angle": "deg", "number": "1",
+}  # fmt: skip
+_COMMON = {
+    "length": ["m", "ft", "km"],
+    "time": ["d", "yr", "h"],
+    "speed": ["m/d", "mm/yr", "mm/d", "m/s", "ft/d"],
+    "rate": ["m3/d", "L/s", "m3/h", "gpm", "m3/yr", "ft3/d"],
+    "discharge": ["m2/d", "ft2/d"],
+    "angle": ["deg"],
+    "number": ["%"],
+}
+_NUMBER = r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?"
+_QUANTITY = re.compile(rf"^\s*({_NUMBER})\s*([^\s\d].*?)?\s*$")
+
+
+class UnitError(ValueError):
+    """A quantity that cannot be understood; the message says what is allowed."""
+
+
+@dataclass(frozen=True)
+class Bare:
+    """What a bare length means: the factor (m) of ``site.length``."""
+
+    length: float = 1.0
+
+
+def quantity(text: object, dimension: str, bare: Bare | None = None) -> float:
+    """A quantity in model units (m, d, m3/d, ...) from what a person wrote.
+
+    dimension: a key of UNITS. Raises UnitError for a missing, unknown or wrong unit and for what is no number.
+    """
+    bare = bare or Bare()
+    if isinstance(text, bool):
+        raise UnitError(f"{'yes/true' if text else 'no/false'} stands where a number belongs")
+    if isinstance(text, int | float):
+        if dimension == "length":
+            return float(text) * bare.length
+        if dimension == "number":
+            return float(text)
+        raise UnitError(f"{text} needs a unit: write '{text} {_COMMON[dimension][0]}' (allowed: {allowed(dimension)})")
+    if not isinstance(text, str):
+        raise UnitError(f"expected a number with a unit such as '10 {_COMMON[dimension][0]}'")
+    if re.match(r"^\s*[+-]?\d+,\d+(\s|$)", text):
+        raise UnitError(f"decimal comma in {text!r}: write {text.replace(',', '.', 1)!r}")
+    if re.match(r"^\s*\d+:\d+", text):
+        raise UnitError(f"{text!r} is a time of day or a ratio, not a number")
+    found = _QUANTITY.match(text)
+    if not found:
+        raise UnitError(f"{text!r} is not a number with a unit such as '10 {_COMMON[dimension][0]}'")
+    number, unit = float(found.group(1)), (found.group(2) or "").replace(" ", "")
+    if not unit:
+        return quantity(number, dimension, bare)
+    table = UNITS[dimension]
+    if unit in table:
+        return number * table[unit]
+    for other, units in UNITS.items():
+        if unit in units and other != dimension:
+            raise UnitError(
+                f"{text!r} is a {_word(other)}, but a {_word(dimension)} belongs here ({allowed(dimension)})"
+            )
+    from .messages import nearest
+
+    near = nearest(unit, table)
+    raise UnitError(
+        f"unknown unit {unit!r}{f', did you mean {near!r}?' if near else ''} (allowed: {allowed(dimension)})"
+    )
+
+
+def allowed(dimension: str) -> str:
+    """The common units of a dimension, as an error lists them."""
+    return ", ".join(_COMMON[dimension])
+
+
+def _word(dimension: str) -> str:
+    return {
+        "speed": "length per time", "rate": "volume per time", "discharge": "flow per width", "number": "pure number"
+    }.get(dimension, dimension)  # fmt: skip
