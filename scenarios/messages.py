@@ -6,6 +6,8 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
+_SHOWN = 110  # characters of a line that an excerpt shows
+
 
 @dataclass(frozen=True)
 class Problem:
@@ -35,8 +37,21 @@ def one(rule: str, text: str, file: Path | None = None, line: int | None = None,
 
 def nearest(word: str, allowed: Iterable[str]) -> str | None:
     """The allowed word most like a misspelt one, None if nothing is near."""
-    found = difflib.get_close_matches(word, list(allowed), n=1, cutoff=0.6)
+    allowed = list(allowed)
+    folded = {a.casefold(): a for a in reversed(allowed)}
+    if word.casefold() in folded:
+        return folded[word.casefold()]
+    found = difflib.get_close_matches(word, allowed, n=1, cutoff=0.6)
     return found[0] if found else None
+
+
+def meant(word: str, allowed: Iterable[str], what: str = "known") -> str:
+    """A help line for a word that is not among the allowed: the likely one, or all of them."""
+    allowed = list(allowed)
+    near = nearest(word, allowed)
+    if near is not None:
+        return f"did you mean {near!r}?"
+    return f"{what}: {', '.join(allowed)}" if allowed else f"{what}: none"
 
 
 def render(problems: Sequence[Problem]) -> str:
@@ -47,7 +62,7 @@ def render(problems: Sequence[Problem]) -> str:
 
 
 def _render_one(problem: Problem) -> str:
-    lines = [f"error[{problem.rule}]: {problem.text}"]
+    lines = [f"error[{problem.rule}]: {_printable(problem.text)}"]
     if problem.file is not None:
         place = str(problem.file)
         if problem.line is not None:
@@ -55,16 +70,18 @@ def _render_one(problem: Problem) -> str:
         lines.append(f"  --> {place}")
         excerpt = _excerpt(problem)
         if excerpt is not None:
+            text, start = excerpt
             margin = " " * len(str(problem.line))
-            lines += [f" {margin} |", f" {problem.line} | {excerpt}"]
+            lines += [f" {margin} |", f" {problem.line} | {text}"]
             if problem.column is not None:
-                lines.append(f" {margin} | {' ' * (problem.column - 1)}{'^' * max(1, problem.width)}")
+                lines.append(f" {margin} | {' ' * (problem.column - 1 - start)}{'^' * max(1, problem.width)}")
     if problem.help:
-        lines.append(f"   = help: {problem.help}")
+        lines.append(f"   = help: {_printable(problem.help)}")
     return "\n".join(lines)
 
 
-def _excerpt(problem: Problem) -> str | None:
+def _excerpt(problem: Problem) -> tuple[str, int] | None:
+    """The part of the line round the column, and the number of characters before it."""
     if problem.file is None or problem.line is None:
         return None
     try:
@@ -73,7 +90,14 @@ def _excerpt(problem: Problem) -> str | None:
         return None
     if not 1 <= problem.line <= len(text):
         return None
-    return text[problem.line - 1][:160].replace("\t", " ")
+    column = problem.column or 1
+    start = 0 if column + problem.width <= _SHOWN else column - 1 - _SHOWN // 3
+    return _printable(text[problem.line - 1])[start : start + _SHOWN], start
+
+
+def _printable(text: str) -> str:
+    """Text without control characters, which a terminal would obey."""
+    return "".join(c if c.isprintable() else " " for c in text)
 
 
 def as_json(problems: Sequence[Problem]) -> str:

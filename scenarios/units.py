@@ -3,8 +3,11 @@
 Only lengths, elevations, coordinates and pure numbers may be bare. 1 yr = 365.25 d.
 """
 
+import math
 import re
 from dataclasses import dataclass
+
+from .messages import nearest
 
 YEAR = 365.25
 FOOT = 0.3048
@@ -38,11 +41,17 @@ _COMMON = {
     "number": ["%"],
 }
 _NUMBER = r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?"
+_RAISED = str.maketrans("²³", "23")
 _QUANTITY = re.compile(rf"^\s*({_NUMBER})\s*([^\s\d].*?)?\s*$")
 
 
 class UnitError(ValueError):
-    """A quantity that cannot be understood; the message says what is allowed."""
+    """A quantity that cannot be understood; ``rule`` names the fault, ``help`` says what to write instead."""
+
+    def __init__(self, rule: str, text: str, help: str | None = None) -> None:
+        super().__init__(text)
+        self.rule = rule
+        self.help = help
 
 
 @dataclass(frozen=True)
@@ -58,45 +67,58 @@ def quantity(text: object, dimension: str, bare: Bare | None = None) -> float:
     dimension: a key of UNITS. Raises UnitError for a missing, unknown or wrong unit and for what is no number.
     """
     bare = bare or Bare()
+    common = _COMMON[dimension][0]
     if isinstance(text, bool):
-        raise UnitError(f"{'yes/true' if text else 'no/false'} stands where a number belongs")
+        raise UnitError("truth-value", f"{str(text).lower()} stands where a number belongs", _example(dimension))
     if isinstance(text, int | float):
+        if not math.isfinite(text):
+            raise UnitError("number", f"{text} is not a finite number")
         if dimension == "length":
             return float(text) * bare.length
         if dimension == "number":
             return float(text)
-        raise UnitError(f"{text} needs a unit: write '{text} {_COMMON[dimension][0]}' (allowed: {allowed(dimension)})")
+        raise UnitError("unit", f"{text} needs a unit", f"write '{text} {common}' (allowed: {allowed(dimension)})")
     if not isinstance(text, str):
-        raise UnitError(f"expected a number with a unit such as '10 {_COMMON[dimension][0]}'")
+        raise UnitError("number", f"expected a number, instead received {_shown(text)}", _example(dimension))
+    if text.strip().lower() in ("yes", "no", "on", "off"):
+        raise UnitError("truth-value", f"{text!r} stands where a number belongs", _example(dimension))
     if re.match(r"^\s*[+-]?\d+,\d+(\s|$)", text):
-        raise UnitError(f"decimal comma in {text!r}: write {text.replace(',', '.', 1)!r}")
+        raise UnitError("decimal-comma", f"decimal comma in {text!r}", f"write {text.replace(',', '.', 1)!r}")
     if re.match(r"^\s*\d+:\d+", text):
-        raise UnitError(f"{text!r} is a time of day or a ratio, not a number")
+        raise UnitError("number", f"{text!r} is a time of day or a ratio, not a number", _example(dimension))
     found = _QUANTITY.match(text)
     if not found:
-        raise UnitError(f"{text!r} is not a number with a unit such as '10 {_COMMON[dimension][0]}'")
+        raise UnitError("number", f"{text!r} is not a number", _example(dimension))
     number, unit = float(found.group(1)), (found.group(2) or "").replace(" ", "")
     if not unit:
         return quantity(number, dimension, bare)
     table = UNITS[dimension]
     if unit in table:
-        return number * table[unit]
+        return quantity(number * table[unit], "number")  # refuses what has grown beyond all numbers
+    help = f"allowed: {allowed(dimension)}"
     for other, units in UNITS.items():
         if unit in units and other != dimension:
-            raise UnitError(
-                f"{text!r} is a {_word(other)}, but a {_word(dimension)} belongs here ({allowed(dimension)})"
-            )
-    from .messages import nearest
-
+            raise UnitError("unit", f"{text!r} is a {_word(other)}, but a {_word(dimension)} belongs here", help)
     near = nearest(unit, table)
-    raise UnitError(
-        f"unknown unit {unit!r}{f', did you mean {near!r}?' if near else ''} (allowed: {allowed(dimension)})"
-    )
+    raise UnitError("unit", f"unknown unit {unit!r}", f"did you mean {near!r}? ({help})" if near else help)
+
+
+def _example(dimension: str) -> str:
+    return "write a number" if dimension in ("length", "number") else f"write it like '10 {_COMMON[dimension][0]}'"
+
+
+def _shown(thing: object) -> str:
+    return {list: "a list", dict: "a map", type(None): "nothing"}.get(type(thing), repr(thing))
 
 
 def allowed(dimension: str) -> str:
     """The common units of a dimension, as an error lists them."""
     return ", ".join(_COMMON[dimension])
+
+
+def _wanted(dimension: str) -> str:
+    bare = "a number" if dimension in ("length", "number") else "a number with a unit"
+    return f"{bare}, such as '10 {_COMMON[dimension][0]}'"
 
 
 def _word(dimension: str) -> str:

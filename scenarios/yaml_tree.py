@@ -28,14 +28,19 @@ class Tree:
     file: Path
     values: dict[Path_, tuple[int, int]] = field(default_factory=dict)
     keys: dict[Path_, tuple[int, int]] = field(default_factory=dict)
+    widths: dict[Path_, int] = field(default_factory=dict)  # characters of the values that are one word or number
 
     def problem(self, rule: str, text: str, path: Path_, help: str | None = None, *, key: bool = False) -> Problem:
         """A problem at a path (or at the nearest part of it that the file has)."""
         table = self.keys if key else self.values
         for n in range(len(path), -1, -1):
-            place = table.get(path[:n]) or self.keys.get(path[:n]) or self.values.get(path[:n])
+            part = path[:n]
+            # a part that the path does not reach is best shown by its key: the first line of its block
+            own = table if n == len(path) else self.keys
+            place = own.get(part) or self.keys.get(part) or self.values.get(part)
             if place:
-                width = len(str(path[-1])) if key and path and n == len(path) else 1
+                at_key = place == self.keys.get(part) and bool(part)
+                width = len(str(part[-1])) if at_key else self.widths.get(part, 1)
                 return Problem(rule, text, self.file, *place, help, width)
         return Problem(rule, text, self.file, 1, 1, help)
 
@@ -79,6 +84,8 @@ def _plain(
         text = "anchors and aliases expand without end" if id(node) in above else "anchors and aliases expand too far"
         raise InputError([Problem("anchors", text, tree.file, *place, "write the values out")])
     if isinstance(node, yaml.ScalarNode):
+        if node.end_mark.line == node.start_mark.line:
+            tree.widths[path] = max(1, node.end_mark.column - node.start_mark.column)
         return _scalar(node)
     inner = (*above, id(node))
     if isinstance(node, yaml.SequenceNode):
@@ -87,7 +94,7 @@ def _plain(
     for key_node, value_node in node.value:
         at = key_node.start_mark.line + 1, key_node.start_mark.column + 1
         key = str(key_node.value) if isinstance(key_node, yaml.ScalarNode) else None
-        if key is None:
+        if not key:
             problems.append(Problem("key", "a key must be a word", tree.file, *at))
             continue
         if key in out:
