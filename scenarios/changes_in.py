@@ -8,7 +8,6 @@ from typing import Any
 from .features_in import read_lake, read_recharge, read_stream, read_well
 from .intake import Intake
 from .messages import meant
-from .quantities import Plain
 from .scenario import Case, Change, Scenario, Value
 from .schema import LakeBlock, RechargeBlock, StepBlock, StreamBlock, WellBlock
 from .schema_check import check_block
@@ -129,8 +128,8 @@ def _change(step: StepBlock, values: dict[str, Changeable], intake: Intake, path
             # a well that injects is kept as a negative rate: more injection is a lower rate
             change = Change("change", target, amount=-amount if known.injects else amount)
     except UnitError as error:
-        help = "a factor such as x0.6, or an amount with its unit such as '-50 m3/d'" if key == "by" else None
-        intake.error("unit", f"{target}: {error}", (*path, key), help)
+        by = "a factor such as x0.6, or an amount with its unit such as '-50 m3/d'"
+        intake.error(error.rule, f"{target}: {error}", (*path, key), by if key == "by" else error.help)
         return None
     reason = _impossible(target, after, known)
     if reason is not None:

@@ -7,7 +7,6 @@ import numpy as np
 
 from .intake import Intake
 from .lines_in import read_line
-from .messages import Problem
 from .quantities import Stated
 from .scenario import (
     GaugingInput,
@@ -124,7 +123,7 @@ def _bottom(block: StreamBlock, intake: Intake, path: Path_) -> tuple[float | No
     try:
         depth = quantity(found.group(1), "length", intake.bare) if found else -1.0
     except UnitError as error:
-        intake.error("unit", f"{error}", (*path, "bed", "bottom"))
+        intake.error(error.rule, f"{error}", (*path, "bed", "bottom"), error.help)
         return None, False
     if depth < 0:
         intake.error("form", "the bottom of a bed is a depth below the stage", (*path, "bed", "bottom"),
@@ -150,8 +149,9 @@ def _stages(
     else:
         at, given = (np.array(column) for column in zip(*stage, strict=True))
         if at[0] != 0.0 or at[-1] != 1.0 or np.any(np.diff(at) <= 0):
-            intake.error("stage", f"stream {name}: shares of the length must rise from 0 to 1; received "
-                         f"{', '.join(f'{a:g}' for a in at)}", path, "the first pair is the source, the last the mouth")  # fmt: skip
+            shares = ", ".join(f"{a:g}" for a in at)
+            text = f"stream {name}: shares of the length must rise from 0 to 1; received {shares}"
+            intake.error("stage", text, path, "the first pair is the source, the last the mouth")
             return None
         new = [a for a in at if np.min(np.abs(share - a)) > 1e-9]
         every = np.sort(np.concatenate([share, new]))
@@ -216,9 +216,9 @@ def read_gauging(name: str, block: GaugingBlock, intake: Intake, path: Path_) ->
         elif "%" in block.error:
             sd = quantity(block.error, "number") * block.flow
         else:
-            raise UnitError(f"{block.error} needs a unit: write '{block.error}%' or a rate such as '2 L/s'")
+            raise UnitError("unit", f"{block.error} needs a unit", f"write '{block.error}%' or a rate such as '2 L/s'")
     except UnitError as error:
-        intake.error("unit", f"gaugings.{name}.error: {error}", (*path, "error"))
+        intake.error(error.rule, f"gaugings.{name}.error: {error}", (*path, "error"), error.help)
         return None
     if not sd > 0:
         intake.error("range", f"gaugings.{name}.error: must be above 0", (*path, "error"),

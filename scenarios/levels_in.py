@@ -171,7 +171,7 @@ def _repeats(rows: list[LevelRow], table: Table, block: LevelsBlock, intake: Int
         if len(group) > 1 and block.repeats in (None, "refuse"):
             names = ", ".join(dict.fromkeys(r.level.name for r in group))
             lines = ", ".join(str(r.row.line) for r in group)
-            help = "say what they become: 'repeats: mean' or 'repeats: latest'; nested screens that differ go to 'leave_out'"
+            help = "say what they become: 'repeats: mean' or 'repeats: latest'; nested screens go to 'leave_out'"
             table.problem(
                 "repeats", f"{len(group)} levels at one place ({names}; lines {lines})", group[1].row, "name", help
             )

@@ -130,8 +130,8 @@ def _from_file(request: FileLine, intake: Intake, path: Path_, at: Path_) -> tup
     polygon = isinstance(shape, shapely.Polygon)
     if not isinstance(shape, shapely.LineString | shapely.Polygon) or shape.is_empty:
         kinds = ", ".join(sorted({s.geom_type for s in shapes}))
-        intake.error("geojson", f"{request.file!r}: one line or polygon is wanted; found {len(shapes)} of {kinds} that do "
-                     "not join end to end", at, "choose one with 'where: {name: ...}'")  # fmt: skip
+        intake.error("geojson", f"{request.file!r}: one line or polygon is wanted; found {len(shapes)} of {kinds} that "
+                     "do not join end to end", at, "choose one with 'where: {name: ...}'")  # fmt: skip
         return None
     if polygon and shape.interiors:
         intake.error("geojson", f"{request.file!r}: the polygon has a hole", at,

@@ -4,8 +4,10 @@ import re
 import unicodedata
 from collections.abc import Collection
 
-_SPELT = str.maketrans({"ä": "ae", "ö": "oe", "ü": "ue", "Ä": "Ae", "Ö": "Oe", "Ü": "Ue", "ß": "ss", "ø": "o", "Ø": "O",
-                        "æ": "ae", "Æ": "Ae", "å": "aa", "Å": "Aa", "ł": "l", "Ł": "L", "đ": "d", "Đ": "D"})  # fmt: skip
+_SPELT = str.maketrans(
+    {"ä": "ae", "ö": "oe", "ü": "ue", "ß": "ss", "ø": "o", "æ": "ae", "å": "aa", "ł": "l", "đ": "d",
+     "Ä": "Ae", "Ö": "Oe", "Ü": "Ue", "Ø": "O", "Æ": "Ae", "Å": "Aa", "Ł": "L", "Đ": "D"}
+)  # fmt: skip
 _RESERVED = {"con", "prn", "aux", "nul", *(f"{port}{n}" for port in ("com", "lpt") for n in range(1, 10))}
 _LONGEST = 60
 

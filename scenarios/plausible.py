@@ -24,8 +24,11 @@ def check(scenario: Scenario, levels: Levels, intake: Intake) -> None:
     _recharge_areas(scenario, intake)
     base, top = scenario.aquifer.base, scenario.aquifer.top
     if top is not None and not top.value > base.value:
-        intake.error("thickness", f"the aquifer's top ({top.value:g} m) is not above its base ({base.value:g} m): negative "
-                     "thickness", ("aquifer", "top"))  # fmt: skip
+        intake.error(
+            "thickness",
+            f"the aquifer's top ({top.value:g} m) is not above its base ({base.value:g} m): negative thickness",
+            ("aquifer", "top"),
+        )
     else:
         _heads(scenario, levels, intake)
     _swapped(scenario, levels, intake)
@@ -40,8 +43,13 @@ def _names(scenario: Scenario, intake: Intake) -> None:
     for kind, names in kinds.items():
         for name in names:
             if name in seen:
-                intake.error("name", f"{kind}.{name}: the name is taken by {seen[name]}", (kind, name),
-                             "give every feature a name of its own", key=True)  # fmt: skip
+                intake.error(
+                    "name",
+                    f"{kind}.{name}: the name is taken by {seen[name]}",
+                    (kind, name),
+                    "give every feature a name of its own",
+                    key=True,
+                )
             seen.setdefault(name, f"{kind}.{name}")
 
 
@@ -51,14 +59,22 @@ def _references(scenario: Scenario, intake: Intake) -> None:
     asked = intake.tree.data.get("streams") or {}
     for g in scenario.gaugings:
         if g.stream not in streams and g.stream not in asked:
-            intake.error("unknown-name", f"gauging {g.name}: there is no stream {g.stream!r}", ("gaugings", g.name, "stream"),
-                         meant(g.stream, streams, "streams"))  # fmt: skip
+            intake.error(
+                "unknown-name",
+                f"gauging {g.name}: there is no stream {g.stream!r}",
+                ("gaugings", g.name, "stream"),
+                meant(g.stream, streams, "streams"),
+            )
     for s in scenario.streams:
         if s.into is None:
             continue
         if s.into == s.name or (s.into not in streams and s.into not in asked):
-            intake.error("unknown-name", f"stream {s.name} cannot flow into {s.into!r}", ("streams", s.name, "into"),
-                         meant(s.into, [n for n in streams if n != s.name], "streams"))  # fmt: skip
+            intake.error(
+                "unknown-name",
+                f"stream {s.name} cannot flow into {s.into!r}",
+                ("streams", s.name, "into"),
+                meant(s.into, [n for n in streams if n != s.name], "streams"),
+            )
         elif any(g.stream == s.into for g in scenario.gaugings):
             intake.note(f"gaugings of {s.into} are taken without what {s.name} brings")
 
@@ -70,8 +86,12 @@ def _far_field(scenario: Scenario, intake: Intake) -> None:
     held = {f"{kind}.{m.name}" for kind in ("streams", "lakes") for m in getattr(scenario, kind)}
     asked = intake.tree.data
     if not held and not asked.get("streams") and not asked.get("lakes"):
-        intake.error("far-field", "nothing fixes the far field: with 'balance: none' a lake or a stream must hold the heads",
-                     ("beyond", "balance"), "add a lake or a stream, or write 'reference: {at: [x, y], head: ...}'")  # fmt: skip
+        intake.error(
+            "far-field",
+            "nothing fixes the far field: with 'balance: none' a lake or a stream must hold the heads",
+            ("beyond", "balance"),
+            "add a lake or a stream, or write 'reference: {at: [x, y], head: ...}'",
+        )
         return
     for case in scenario.cases:
         left = set(held)
@@ -79,8 +99,12 @@ def _far_field(scenario: Scenario, intake: Intake) -> None:
             left |= {change.path} if change.verb == "add" and change.path.startswith(("streams.", "lakes.")) else set()
             left -= {change.path} if change.verb == "remove" else set()
         if held and not left:
-            intake.error("far-field", f"case {case.name} removes the last lake and stream: nothing fixes the far field",
-                         ("cases", case.name), key=True)  # fmt: skip
+            intake.error(
+                "far-field",
+                f"case {case.name} removes the last lake and stream: nothing fixes the far field",
+                ("cases", case.name),
+                key=True,
+            )
 
 
 def _recharge_areas(scenario: Scenario, intake: Intake) -> None:
@@ -89,8 +113,13 @@ def _recharge_areas(scenario: Scenario, intake: Intake) -> None:
     for i, r in enumerate(rated):
         for other in rated[:i]:
             if _overlap(r, other):
-                intake.error("overlap", f"recharge {r.name} and {other.name} cover the same ground", ("recharge", r.name),
-                             "write 'adds' in place of 'rate' for the patch that comes on top", key=True)  # fmt: skip
+                intake.error(
+                    "overlap",
+                    f"recharge {r.name} and {other.name} cover the same ground",
+                    ("recharge", r.name),
+                    "write 'adds' in place of 'rate' for the patch that comes on top",
+                    key=True,
+                )
 
 
 def _overlap(a: RechargeInput, b: RechargeInput) -> bool:
@@ -129,19 +158,29 @@ def _heads(scenario: Scenario, levels: Levels, intake: Intake) -> None:
     wrong_unit = _unit_mistake(heads, stages)
     below = [r for r in rows if low is not None and r.level.head < low]
     if wrong_unit is not None:
-        table.problem("feet", f"{wrong_unit}: the levels ({_span(heads)}) do not fit the stages ({_span(stages)})", rows[0].row,
-                      what, "say the unit of the column, such as 'levels.units: {head: ft}', or set site.length")  # fmt: skip
+        table.problem(
+            "feet",
+            f"{wrong_unit}: the levels ({_span(heads)}) do not fit the stages ({_span(stages)})",
+            rows[0].row,
+            what,
+            "say the unit of the column, such as 'levels.units: {head: ft}', or set site.length",
+        )
     elif (len(below) >= _MOST * len(rows) and len(rows) > 2) or _depth_like(heads, stages):
         against = (
             f"the base of the aquifer ({scenario.aquifer.base.value:g} m)" if below else f"the stages ({_span(stages)})"
         )
         count = len(below) if below else len(rows)
-        table.problem("depth-as-head", f"{count} of {len(rows)} levels ({_span(heads)}) lie below {against}: depth to water "
-                      "given as head?", rows[0].row, what,
-                      "for depths write 'columns: {measuring_point: ..., depth: ...}'")  # fmt: skip
+        table.problem(
+            "depth-as-head",
+            f"{count} of {len(rows)} levels ({_span(heads)}) lie below {against}: depth to water given as head?",
+            rows[0].row,
+            what,
+            "for depths write 'columns: {measuring_point: ..., depth: ...}'",
+        )
     else:
         for r in below:
-            text = f"level {r.level.name} ({r.level.head:g} m) lies below the base of the aquifer ({scenario.aquifer.base.value:g} m)"
+            base = scenario.aquifer.base.value
+            text = f"level {r.level.name} ({r.level.head:g} m) lies below the base of the aquifer ({base:g} m)"
             table.problem("below-base", text, r.row, what, "mend it, or name it in 'levels.leave_out' with the reason")
 
 
@@ -192,8 +231,14 @@ def _swapped(scenario: Scenario, levels: Levels, intake: Intake) -> None:
 
     if near(xy) < 1.0 - _MOST and near(xy[:, ::-1]) >= _MOST:
         r: LevelRow = rows[0]
-        table.problem("swapped", f"the levels lie {_distance(xy, low, high) / 1000:.0f} km from everything else, but among it "
-                      "with x and y swapped", r.row, "x", "swap the columns: 'columns: {x: ..., y: ...}' (x is east)")  # fmt: skip
+        table.problem(
+            "swapped",
+            f"the levels lie {_distance(xy, low, high) / 1000:.0f} km from everything else, but among it "
+            "with x and y swapped",
+            r.row,
+            "x",
+            "swap the columns: 'columns: {x: ..., y: ...}' (x is east)",
+        )
 
 
 def _distance(xy: np.ndarray, low: np.ndarray, high: np.ndarray) -> float:
@@ -224,8 +269,12 @@ def _counts(scenario: Scenario, levels: Levels, intake: Intake) -> None:
     if kinds["free"] > readings and not unread:
         first = next(v for v in _values(scenario) if v.kind == "free")
         path = _path_of(first.path, intake)
-        intake.error("too-many-free", f"{kinds['free']} values are free, but there are only {readings} readings: more estimates "
-                     "than data", path, "give them priors: {estimate: ..., factor: ...} or {estimate: ..., sd: ...}")  # fmt: skip
+        intake.error(
+            "too-many-free",
+            f"{kinds['free']} values are free, but there are only {readings} readings: more estimates than data",
+            path,
+            "give them priors: {estimate: ..., factor: ...} or {estimate: ..., sd: ...}",
+        )
     elif readings and kinds["free"] + kinds["estimate"] > readings:
         total = kinds["free"] + kinds["estimate"]
         intake.note(

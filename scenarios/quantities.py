@@ -51,7 +51,7 @@ class Plain:
         try:
             value = quantity(raw, self.dimension, bare)
         except UnitError as error:
-            refuse("unit", str(error), at=at)
+            refuse(error.rule, str(error), error.help, at)
         self.check(value, raw, at)
         return value
 
@@ -112,7 +112,7 @@ class Takes(Plain):
             refuse("form", "a number's map has one of 'value', 'estimate' and 'free'", at=at)
         kind = given[0]
         if kind != "value" and not self.fitted:
-            refuse("form", "this number is not fitted: state its value", "write the number, or {value: ..., source: ...}",
+            refuse("form", "this number is not fitted: state its value", "write the number alone",
                    (*at, kind), key=True)  # fmt: skip
         value = super().read(raw[kind], info, (*at, kind))
         factor = sd = None

@@ -74,10 +74,25 @@ def _assembled(block: Any, intake: Intake) -> tuple[Scenario, Levels]:
         intake.note("the vertical datum is unknown: heights of different sources may not fit each other")
     text = intake.tree.file.read_bytes()
     scenario = Scenario(
-        intake.tree.file.resolve(), hashlib.sha256(text).hexdigest(), block.title, site, _aquifer(block.aquifer, intake),
-        _beyond(block.beyond), outline, wells, streams, lakes, recharge, tuple(v.level for v in levels.rows),
-        levels.datum_sd, gaugings, (), block.solve.tolerance, block.solve.seed, (),
-    )  # fmt: skip
+        intake.tree.file.resolve(),
+        hashlib.sha256(text).hexdigest(),
+        block.title,
+        site,
+        _aquifer(block.aquifer, intake),
+        _beyond(block.beyond),
+        outline,
+        wells,
+        streams,
+        lakes,
+        recharge,
+        tuple(v.level for v in levels.rows),
+        levels.datum_sd,
+        gaugings,
+        (),
+        block.solve.tolerance,
+        block.solve.seed,
+        (),
+    )
     return scenario, levels
 
 

@@ -24,7 +24,7 @@ class FileLine(Block):
 
     file: str
     """GeoJSON file beside the scenario or in a folder below it."""
-    where: dict[str, str] = {}
+    where: dict[str, str] = Field(default_factory=dict)
     """Properties that the wanted feature has, such as {name: Elm}; left out where the file holds one feature."""
     thin: Distance | None = None
     """Vertices are dropped as long as the line moves by less than this (length)."""
@@ -189,9 +189,9 @@ class TableBlock(Block):
 
     file: str
     """CSV file with a header row, beside the scenario or in a folder below it."""
-    columns: dict[str, str] = {}
+    columns: dict[str, str] = Field(default_factory=dict)
     """Which column holds what, {what: name of the column}; columns with our own names need no entry."""
-    units: dict[str, str] = {}
+    units: dict[str, str] = Field(default_factory=dict)
     """Units of columns, {what: unit}; without an entry lengths are in `site.length`."""
     delimiter: Literal[",", ";", "tab"] = ","
     """What stands between cells."""
@@ -294,14 +294,14 @@ class LevelsBlock(TableBlock):
     error: Annotated[
         Annotated[SdByQuality, Tag("map")] | Annotated[Distance, Tag("number")] | Annotated[Distance, Tag("text")],
         Discriminator(_form_of, custom_error_type="form",
-                      custom_error_message="expected an sd such as 0.03, or one for each quality {surveyed: 0.03, gps: 0.5}"),
+                      custom_error_message="expected an sd such as 0.03, or one by quality {surveyed: 0.03, gps: 0.5}"),
     ]  # fmt: skip
     """Standard deviation of a reading (length), one or by the column `quality`."""
-    datum_error: SdByQuality = {}
+    datum_error: SdByQuality = Field(default_factory=dict)
     """Sd of the error that levels with the same entry in the column `datum` share (length)."""
     repeats: Literal["refuse", "mean", "latest"] | None = None
     """What several readings at one place become."""
-    leave_out: dict[str, str] = {}
+    leave_out: dict[str, str] = Field(default_factory=dict)
     """Levels that are not fitted, {name: reason}; they stay on the map and in the report."""
 
 
@@ -363,17 +363,17 @@ class _Frame(Block):
     """An impermeable side."""
     wells: WellsBlock = WellsBlock()
     """Wells by name."""
-    streams: dict[str, StreamBlock] = {}
+    streams: dict[str, StreamBlock] = Field(default_factory=dict)
     """Streams by name."""
-    lakes: dict[str, LakeBlock] = {}
+    lakes: dict[str, LakeBlock] = Field(default_factory=dict)
     """Lakes by name."""
-    recharge: dict[str, RechargeBlock] = {}
+    recharge: dict[str, RechargeBlock] = Field(default_factory=dict)
     """Recharge by name."""
     levels: LevelsBlock | None = None
     """Water levels; without them nothing is fitted."""
-    gaugings: dict[str, GaugingBlock] = {}
+    gaugings: dict[str, GaugingBlock] = Field(default_factory=dict)
     """Stream flows by name."""
-    cases: dict[str, list[StepBlock]] = {}
+    cases: dict[str, list[StepBlock]] = Field(default_factory=dict)
     """Named changes to the fitted field, never fitted again."""
     solve: SolveBlock = SolveBlock()
     """How exactly the field is solved."""

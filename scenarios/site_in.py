@@ -29,7 +29,10 @@ def read_crs(block: SiteBlock, intake: Intake) -> str:
 def read_site(
     block: SiteBlock, levels: list[tuple[float, float]], every: list[tuple[float, float]], intake: Intake
 ) -> Site | None:
-    """The frame; levels and every: places (x, y) in m that the drawn box may go round. None where it cannot be drawn."""
+    """The frame; None where it cannot be drawn.
+
+    levels, every: places (x, y) in m that the drawn box may go round.
+    """
     draw = block.draw
     if isinstance(draw, DrawBox):
         for axis in ("x", "y"):

@@ -15,8 +15,10 @@ from .yaml_tree import Path_
 
 _NOT_CSV = {b"PK\x03\x04": "a spreadsheet (.xlsx)", b"\xd0\xcf\x11\xe0": "a spreadsheet (.xls)", b"%PDF": "a PDF",
             b"\x1f\x8b": "a compressed file"}  # fmt: skip
-_UNIT_WORD = re.compile(r"^[\[(]?\s*(" + "|".join(sorted({u for t in UNITS.values() for u in t} | {"-", "masl", "mNN", "date",
-                        "text"}, key=len, reverse=True)).replace("/", r"\/") + r")\s*[\])]?$", re.I)  # fmt: skip
+_WORDS = {u for table in UNITS.values() for u in table} | {"-", "masl", "date", "text"}
+_UNIT_WORD = re.compile(
+    rf"[\[(]?\s*({'|'.join(re.escape(w) for w in sorted(_WORDS, key=len, reverse=True))})\s*[\])]?", re.I
+)
 
 
 @dataclass(frozen=True)
@@ -58,14 +60,14 @@ class Table:
         try:
             return quantity(text, dimension, self.intake.bare)
         except UnitError as error:
-            help = None
+            help, rule = error.help, error.rule
             if re.fullmatch(r"\s*[-+]?\d+,\d+\s*", text):
                 help = "set 'decimal: \",\"' for the whole file"
             elif re.fullmatch(r"[-+.\deE]+", text):
                 help = f"say the unit of the column: units: {{{what}: ...}}"
-            elif dimension == "length":
+            elif dimension == "length" and rule == "number":
                 help = "leave the cell empty where nothing was measured; it is then listed as not used"
-            self.problem("number", f"{said}: {error}", row, what, help)
+            self.problem(rule, f"{said}: {error}", row, what, help)
             return None
 
 
@@ -85,7 +87,7 @@ def read_table(block: TableBlock, intake: Intake, path: Path_, roles: dict[str, 
         try:
             quantity(f"1 {unit}", roles[what], Bare()) if roles[what] != "text" else None
         except UnitError as error:
-            intake.error("unit", f"units.{what}: {error}", (*path, "units", what))
+            intake.error(error.rule, f"units.{what}: {error}", (*path, "units", what), error.help)
             return None
     file = intake.file(block.file, (*path, "file"))
     text = None if file is None else _text_of(file, block, intake, (*path, "file"))
@@ -160,9 +162,8 @@ def _lines(text: str, delimiter: str) -> Iterator[tuple[int, list[str], list[int
         except csv.Error:  # a cell longer than any of ours: give it up as one row of one cell
             cells = ["unreadable"]
         first, before = before + 1, reader.line_num
-        places, at, quoted = [1], 0, False
-        for character in lines[first - 1] if first <= len(lines) else "":
-            at += 1
+        places, quoted = [1], False
+        for at, character in enumerate(lines[first - 1] if first <= len(lines) else "", 1):
             if character == '"':
                 quoted = not quoted
             elif character == delimiter and not quoted:
@@ -191,7 +192,7 @@ def _columns(
             intake.problems.append(Problem("delimiter", text, file, number, column, help))
             return None
     if sum(bool(re.fullmatch(r"[-+]?\d+([.,]\d+)?", n)) for n in names) >= 2:
-        intake.problems.append(Problem("header", f"{block.file!r} has no header row: its first line holds numbers", file,
+        intake.problems.append(Problem("header", f"{block.file!r} has no header row, but numbers there", file,
                                        number, 1, "name the columns in the first line"))  # fmt: skip
         return None
     found, good = {}, True
@@ -216,7 +217,7 @@ def _units_row(table: Table, roles: dict[str, str]) -> bool:
     """Whether the first row holds units in place of numbers (then a problem is kept)."""
     row = table.rows[0]
     cells = [row.cells[w].strip() for w in row.cells if roles[w] != "text"]
-    if not cells or not all(_UNIT_WORD.match(c) for c in cells if c) or not any(cells):
+    if not cells or not all(_UNIT_WORD.fullmatch(c) for c in cells if c) or not any(cells):
         return False
     what = next(w for w in row.cells if roles[w] != "text")
     table.problem("units-row", f"line {row.line} holds units, not numbers ({', '.join(cells)})", row, what,

@@ -69,7 +69,7 @@ def quantity(text: object, dimension: str, bare: Bare | None = None) -> float:
     bare = bare or Bare()
     common = _COMMON[dimension][0]
     if isinstance(text, bool):
-        raise UnitError("truth-value", f"{str(text).lower()} stands where a number belongs", _example(dimension))
+        raise UnitError("truth-value", f"'{str(text).lower()}' stands where a number belongs", _example(dimension))
     if isinstance(text, int | float):
         if not math.isfinite(text):
             raise UnitError("number", f"{text} is not a finite number")
@@ -77,10 +77,11 @@ def quantity(text: object, dimension: str, bare: Bare | None = None) -> float:
             return float(text) * bare.length
         if dimension == "number":
             return float(text)
-        raise UnitError("unit", f"{text} needs a unit", f"write '{text} {common}' (allowed: {allowed(dimension)})")
+        raise UnitError("unit", f"{text:g} needs a unit", f"write '{text:g} {common}' (allowed: {allowed(dimension)})")
     if not isinstance(text, str):
         raise UnitError("number", f"expected a number, instead received {_shown(text)}", _example(dimension))
-    if text.strip().lower() in ("yes", "no", "on", "off"):
+    text = text.translate(_RAISED)
+    if text.strip().lower() in ("yes", "no", "on", "off", "y", "n", "true", "false"):
         raise UnitError("truth-value", f"{text!r} stands where a number belongs", _example(dimension))
     if re.match(r"^\s*[+-]?\d+,\d+(\s|$)", text):
         raise UnitError("decimal-comma", f"decimal comma in {text!r}", f"write {text.replace(',', '.', 1)!r}")
@@ -114,11 +115,6 @@ def _shown(thing: object) -> str:
 def allowed(dimension: str) -> str:
     """The common units of a dimension, as an error lists them."""
     return ", ".join(_COMMON[dimension])
-
-
-def _wanted(dimension: str) -> str:
-    bare = "a number" if dimension in ("length", "number") else "a number with a unit"
-    return f"{bare}, such as '10 {_COMMON[dimension][0]}'"
 
 
 def _word(dimension: str) -> str:

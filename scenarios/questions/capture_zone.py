@@ -1,8 +1,8 @@
 """The ground whose water reaches a well, and how soon."""
 
-from typing import Annotated
+from typing import TYPE_CHECKING, Annotated
 
-from pydantic import BeforeValidator
+from pydantic import BeforeValidator, Field
 
 from ..block import Block
 from ..messages import meant
@@ -10,17 +10,20 @@ from ..quantities import Plain
 from ..scenario import Scenario, WellInput
 from ._shared import Fault, Names, as_list, unknown_cases
 
+if TYPE_CHECKING:
+    from ..context import Context, Result
+
 Days = Annotated[float, Plain("time", above=0.0)]
 
 
 class Options(Block):
     """Capture zones of wells and the zones of given travel times."""
 
-    wells: Names = []
+    wells: Names = Field(default_factory=list)
     """Pumping wells; none listed = all of them."""
-    times: Annotated[list[Days], BeforeValidator(as_list)] = []
+    times: Annotated[list[Days], BeforeValidator(as_list)] = Field(default_factory=list)
     """Travel times whose zones are drawn, such as [50 d, 2 yr]."""
-    cases: Names = []
+    cases: Names = Field(default_factory=list)
     """Cases that are delineated too, beside the field as it is."""
 
 
@@ -47,3 +50,10 @@ def _wells(options: Options, scenario: Scenario) -> list[WellInput]:
         if case.name in options.cases:
             wells += [c.feature for c in case.changes if c.verb == "add" and isinstance(c.feature, WellInput)]
     return wells
+
+
+def answer(options: Options, context: "Context") -> "list[Result]":
+    """Zones of the asked wells in the base and in the asked cases."""
+    from ..capture import zones_of
+
+    return [result for case in context.asked(options.cases) for result in zones_of(case, context, options)]
