@@ -165,7 +165,6 @@ def main(arguments: list[str] | None = None) -> None:
     try:
         code = app(args=asked, prog_name="wellshed", standalone_mode=False)
     except (KeyboardInterrupt, typer.Abort):
-        typer.echo("stopped; earlier answers are as they were", err=True)
         code = STOPPED
     except Exception as error:
         if "--debug" in given:
@@ -173,6 +172,8 @@ def main(arguments: list[str] | None = None) -> None:
 
             traceback.print_exc()
         code = _failed(error, given)
+    if code == STOPPED:
+        typer.echo("stopped; earlier answers are as they were", err=True)
     sys.exit(code or ANSWERED)
 
 

@@ -54,6 +54,13 @@ def meant(word: str, allowed: Iterable[str], what: str = "known") -> str:
     return f"{what}: {', '.join(allowed)}" if allowed else f"{what}: none"
 
 
+def comma_help(key: str, value: object) -> str | None:
+    """Help for a "key" that is the tail of a decimal comma: ``{stage: 62,6}`` has the keys stage and 6."""
+    if value is None and key[:1].isdigit():
+        return "is this the end of a number with a decimal comma? write a decimal point"
+    return None
+
+
 def render(problems: Sequence[Problem]) -> str:
     """Problems as text for a terminal: message, place, the line with a caret, help."""
     parts = [_render_one(p) for p in problems]

@@ -7,7 +7,7 @@ from typing import Any, Literal
 from pydantic import GetCoreSchemaHandler, GetJsonSchemaHandler, ValidationInfo
 from pydantic_core import CoreSchema, PydanticCustomError, core_schema
 
-from .messages import meant
+from .messages import comma_help, meant
 from .scenario import Value
 from .units import MODEL_UNIT, Bare, UnitError, allowed, quantity
 
@@ -106,7 +106,8 @@ class Takes(Plain):
             return Stated(super().read(raw, info, at), unit)
         for key in raw:
             if key not in _KEYS:
-                refuse("unknown-key", f"{key!r} is not a key of a number", meant(key, _KEYS), (*at, key), key=True)
+                help = comma_help(key, raw[key]) or meant(key, _KEYS)
+                refuse("unknown-key", f"{key!r} is not a key of a number", help, (*at, key), key=True)
         given = [k for k in ("value", "estimate", "free") if k in raw]
         if len(given) != 1:
             refuse("form", "a number's map has one of 'value', 'estimate' and 'free'", at=at)

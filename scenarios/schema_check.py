@@ -7,7 +7,7 @@ from typing import Annotated, Any, Union, get_args, get_origin
 
 from pydantic import BaseModel, ValidationError
 
-from .messages import Problem, meant, nearest
+from .messages import Problem, comma_help, meant, nearest
 from .schema import scenario_model
 from .units import Bare
 from .yaml_tree import Path_, Tree
@@ -52,7 +52,8 @@ def _problems(error: ValidationError, model: type[BaseModel], data: Any, tree: T
         elif kind == "extra_forbidden":
             keys = _keys_at(model, loc[:-1], data)
             text = f"{_dotted((*at, *loc))} is not a known key"
-            found.append(tree.problem("unknown-key", text, (*at, *loc), meant(str(loc[-1]), keys), key=True))
+            help = comma_help(str(loc[-1]), fault["input"]) or meant(str(loc[-1]), keys)
+            found.append(tree.problem("unknown-key", text, (*at, *loc), help, key=True))
         elif kind == "wellshed":
             path = (*at, *loc, *ctx["at"])
             text = f"{_dotted(path)}: {ctx['text']}" if path else ctx["text"]
