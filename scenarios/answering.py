@@ -1,0 +1,172 @@
+"""Answer a scenario: fit, solve its cases, answer its questions, check what must hold."""
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from ..elements.flow_field import FlowField
+from ..solver.balance import BEYOND
+from ..solver.boundary import Solution
+from .building import Model, build
+from .cases import CaseAnswer, solve_case
+from .context import BASE, Check, Context, Result
+from .fitting import Fitted, fit_scenario
+from .messages import InputError, Problem
+from .questions import question_module
+from .scenario import Scenario
+from .summary import parameter_rows, residual_rows
+
+CLOSED = 1e-6  # of the water that moves: a balance must close to this
+ROUND_CLOSED = 1e-4  # the same by quadrature of the flow round the whole site
+
+
+@dataclass(frozen=True)
+class Answers:
+    """Everything that a run found. ``flow`` is the fitted field; ``to_json`` gives the content of answers.json."""
+
+    scenario: Scenario
+    model: Model
+    fitted: Fitted
+    cases: dict[str, CaseAnswer]
+    results: tuple[Result, ...]
+    checks: tuple[Check, ...]
+    notes: tuple[str, ...]
+
+    @property
+    def flow(self) -> FlowField:
+        """The fitted flow field (base case)."""
+        return self.cases[BASE].solution.flow
+
+    def to_json(self) -> dict[str, Any]:
+        """Content of answers.json; lengths m, times d, rates m3/d."""
+        from .. import __version__
+
+        solution, result = self.fitted.solution, self.fitted.result
+        report = solution.boundary
+        rows = residual_rows(self.scenario, self.model, self.fitted)
+        used = [r["residual"] for r in rows if not r["left_out"] and r["residual"] is not None and r["kind"] == "level"]
+        return {
+            "wellshed": __version__,
+            "scenario": {"file": self.scenario.file.name, "sha256": self.scenario.sha256, "title": self.scenario.title},
+            "seed": self.scenario.seed,
+            "site": {"crs": self.scenario.site.crs, "heights": self.scenario.site.heights},
+            "fit": {
+                "parameters": parameter_rows(self.scenario, self.model, self.fitted),
+                "residuals": rows,
+                "rmse": float(np.sqrt(np.mean(np.square(used)))) if used else None,
+                "scale": None if result is None else result.scale,
+                "degrees_of_freedom": None if result is None or not np.isfinite(result.dof) else result.dof,
+                "own_errors": None if result is None else {
+                    "misfit": result.own_misfit, "degrees_of_freedom": result.own_dof, "probability": result.own_probability,
+                },
+                "warnings": list(self.fitted.warnings),
+            },
+            "boundary": {
+                "max_misfit": report.max_misfit, "at": list(report.at), "feature": report.feature,
+                "tolerance": report.tolerance, "met": report.met, "unknowns": report.unknowns,
+            },
+            "balance": balance_list(solution),
+            "balance_closure": closure(solution),
+            "cases": [
+                {
+                    "name": c.name, "balance": balance_list(c.solution), "max_misfit": c.solution.boundary.max_misfit,
+                    "drawdown": c.drawdown, "exchange_change": c.exchange_change,
+                }
+                for c in self.cases.values()
+            ],
+            "answers": [r.entry for r in self.results],
+            "checks": [{"name": c.name, "passed": c.passed, "value": c.value, "bound": c.bound} for c in self.checks],
+            "notes": list(self.notes),
+        }  # fmt: skip
+
+
+def answer(scenario: Scenario, *, progress: Callable[[str], None] | None = None) -> Answers:
+    """Answer every question of a scenario.
+
+    Raises InputError for geometry that cannot stand and NotSolvedError where the numbers do not fix a field.
+    """
+    say = progress or (lambda _: None)
+    try:
+        model = build(scenario)
+    except ValueError as error:
+        raise InputError([Problem("geometry", str(error), scenario.file)]) from None
+    fitted = fit_scenario(scenario, model, say)
+    cases = {BASE: CaseAnswer(BASE, scenario, model, fitted.solution, {}, {})}
+    for case in scenario.cases:
+        say(f"solving case {case.name}")
+        cases[case.name] = solve_case(scenario, model, fitted, case)
+    context = Context(scenario, fitted, cases, say)
+    results: list[Result] = []
+    for question in scenario.questions:
+        results += question_module(question.kind).answer(question.options, context)
+    checks = [check for case in cases.values() for check in _field_checks(case)]
+    checks += [check for result in results for check in result.checks]
+    notes = (*scenario.notes, *model.notes, *fitted.solution.boundary.notes)
+    return Answers(scenario, model, fitted, cases, tuple(results), tuple(checks), notes)
+
+
+def balance_list(solution: Solution) -> list[dict[str, Any]]:
+    """Balance rows as answers.json prints them (m3/d)."""
+    return [{"feature": r.feature, "kind": r.kind, "inflow": r.inflow, "outflow": r.outflow} for r in solution.balance]
+
+
+def closure(solution: Solution) -> float:
+    """What the balance leaves open, as a share of the water that moves."""
+    into = sum(r.inflow for r in solution.balance)
+    out = sum(r.outflow for r in solution.balance)
+    return abs(into - out) / max(into, out, 1e-12)
+
+
+def _field_checks(case: CaseAnswer) -> list[Check]:
+    solution = case.solution
+    report = solution.boundary
+    opened, round_open = closure(solution), round_closure(solution)
+    return [
+        Check(f"boundary conditions met in {case.name} (m)", report.met, report.max_misfit, report.tolerance),
+        Check(f"balance of {case.name} closes (share)", opened <= CLOSED, opened, CLOSED),
+        Check(f"flow round the site agrees with the balance of {case.name} (share)", round_open <= ROUND_CLOSED, round_open,
+              ROUND_CLOSED),
+    ]  # fmt: skip
+
+
+def round_closure(solution: Solution) -> float:
+    """The water from afar by quadrature of the discharge round a circle about everything, against its balance row.
+
+    Independent of the strengths' sums: a share of the water that moves.
+    """
+    places = solution.places
+    radius = 1.5 * places.scale
+    angles = 2.0 * np.pi * np.arange(720) / 720
+    qx, qy = solution.flow.discharge(
+        places.origin[0] + radius * np.cos(angles), places.origin[1] + radius * np.sin(angles)
+    )
+    into = -float(np.mean(qx * np.cos(angles) + qy * np.sin(angles))) * 2.0 * np.pi * radius
+    row = next(r for r in solution.balance if r.feature == BEYOND)
+    moved = max(sum(r.inflow for r in solution.balance), sum(r.outflow for r in solution.balance), 1e-12)
+    return abs(into - (row.inflow - row.outflow)) / moved
+
+
+def report_lines(answers: Answers) -> list[str]:
+    """What a run prints: the fit, the answers in a sentence each, warnings, checks that failed."""
+    lines = [answers.scenario.title]
+    solution, result = answers.fitted.solution, answers.fitted.result
+    report = solution.boundary
+    lines.append(
+        f"boundary conditions met to {1000 * report.max_misfit:.2g} mm (worst at {report.feature or 'none'}), "
+        f"{report.unknowns} unknowns; balance closes to {closure(solution):.1g}"
+    )
+    if result is not None:
+        own = f", readings' own errors alone: chance {result.own_probability:.2g}" if result.own_dof > 0 else ""
+        lines.append(f"fit: {len(result.parameters)} numbers, scale {result.scale:.2f}{own}")
+        for row in parameter_rows(answers.scenario, answers.model, answers.fitted):
+            if row["informed"] is not None:
+                lines.append(
+                    f"  {row['name']}: {row['value']:.4g} ± {row['sd']:.2g} {row['unit']}, informed {row['informed']:.0%}"
+                )
+    lines += [r.words for r in answers.results]
+    lines += [f"warning: {w}" for w in answers.fitted.warnings]
+    lines += [f"note: {n}" for n in answers.notes]
+    lines += [f"FAILED: {c.name}: {c.value:.3g}, bound {c.bound:.3g}" for c in answers.checks if not c.passed]
+    return lines

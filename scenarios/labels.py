@@ -1,0 +1,87 @@
+"""Labels on a map that overlap neither each other nor marks nor the frame: greedy placement by bounding boxes."""
+
+from dataclasses import dataclass, field
+
+import numpy as np
+from matplotlib.axes import Axes
+from matplotlib.backends.backend_agg import RendererAgg
+from matplotlib.patheffects import withStroke
+from matplotlib.text import Text
+from matplotlib.transforms import Bbox
+
+_AROUND = [
+    (1, 0.6),
+    (1, -0.6),
+    (-1, 0.6),
+    (-1, -0.6),
+    (0, 1),
+    (0, -1),
+    (1.6, 1.3),
+    (-1.6, 1.3),
+    (1.6, -1.3),
+    (-1.6, -1.3),
+]
+_PAD = 1.0  # pixels kept free round a label
+
+
+@dataclass
+class Labels:
+    """Places labels on an axes, in the order of their importance; keeps the boxes taken so far (pixels)."""
+
+    axes: Axes
+    renderer: RendererAgg
+    taken: list[Bbox] = field(default_factory=list)
+
+    def keep_free(self, x: float, y: float, points: float) -> None:
+        """Reserve the place of a mark of some size (typographic points) at data coordinates x, y."""
+        px, py = self.axes.transData.transform((x, y))
+        r = 0.5 * points * self.axes.figure.dpi / 72.0
+        self.taken.append(Bbox.from_extents(px - r, py - r, px + r, py + r))
+
+    def beside(self, x: float, y: float, text: str, away: float, **style: object) -> Text | None:
+        """A label ``away`` points from a mark at x, y; None where no free place was found."""
+        for dx, dy in _AROUND:
+            across = "left" if dx > 0 else "right" if dx < 0 else "center"
+            up = "bottom" if dy > 0 else "top" if dy < 0 else "center"
+            placed = self.axes.annotate(
+                text, (x, y), (away * dx, away * dy), textcoords="offset points", ha=across, va=up,
+                path_effects=[withStroke(linewidth=2.0, foreground="white")], **style,
+            )  # fmt: skip
+            if self._free(placed):
+                return placed
+            placed.remove()
+        return None
+
+    def along(self, line: np.ndarray, text: str, candidates: int = 15, **style: object) -> Text | None:
+        """A label on a line (n, 2), turned with it, at the first of some evenly spread places that is free."""
+        if len(line) < 2:
+            return None
+        pixels = self.axes.transData.transform(line)
+        s = np.concatenate([[0.0], np.cumsum(np.hypot(*np.diff(pixels, axis=0).T))])
+        if s[-1] < 30.0:
+            return None
+        shares = 0.5 + np.array([(-1) ** k * ((k + 1) // 2) / candidates for k in range(candidates)])
+        for share in shares[(shares > 0.06) & (shares < 0.94)]:
+            at = share * s[-1]
+            ends = [np.array([np.interp(at + d, s, pixels[:, i]) for i in (0, 1)]) for d in (-12.0, 12.0)]
+            angle = float(np.degrees(np.arctan2(*(ends[1] - ends[0])[::-1])))
+            angle = (angle + 90.0) % 180.0 - 90.0
+            x, y = self.axes.transData.inverted().transform(0.5 * (ends[0] + ends[1]))
+            placed = self.axes.text(
+                x, y, text, rotation=angle, rotation_mode="anchor", ha="center", va="center",
+                path_effects=[withStroke(linewidth=2.2, foreground="white")], **style,
+            )  # fmt: skip
+            if self._free(placed):
+                return placed
+            placed.remove()
+        return None
+
+    def _free(self, text: Text) -> bool:
+        box = text.get_window_extent(self.renderer).padded(_PAD)
+        frame = self.axes.get_window_extent(self.renderer)
+        if box.x0 < frame.x0 or box.x1 > frame.x1 or box.y0 < frame.y0 or box.y1 > frame.y1:
+            return False
+        if any(box.overlaps(other) for other in self.taken):
+            return False
+        self.taken.append(box)
+        return True
