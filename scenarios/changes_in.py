@@ -62,11 +62,16 @@ def changeable(scenario: Scenario) -> dict[str, Changeable]:
 def read_cases(cases: dict[str, list[StepBlock]], base: Scenario, intake: Intake) -> tuple[Case, ...]:
     """The cases of a scenario; problems are kept at the intake."""
     found = []
+    known = {f"{kind}.{m.name}" for kind in _KINDS for m in getattr(base, kind)}
+    # what was refused when it was read must not be reported again wherever a case names it
+    refused = {f"{kind}.{name}" for kind in _KINDS for name in intake.tree.data.get(kind) or {}} - known
     for name, steps in cases.items():
-        values = changeable(base)
-        features = {f"{kind}.{m.name}" for kind in _KINDS for m in getattr(base, kind)}
+        values, features = changeable(base), set(known)
         changes = []
         for i, step in enumerate(steps):
+            named = str(step.change or step.remove)
+            if any(named == r or named.startswith(r + ".") for r in refused):
+                continue
             change = _step(step, values, features, intake, ("cases", name, i))
             if change is not None:
                 changes.append(change)

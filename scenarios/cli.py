@@ -84,7 +84,9 @@ def check(scenario: _SCENARIO, allow_outside: _OUTSIDE = False, format: _FORMAT 
 
     read = load(scenario, allow_outside=allow_outside)
     if format is Format.json:
-        typer.echo('{\n  "errors": []\n}')
+        import json
+
+        typer.echo(json.dumps({"errors": [], "notes": read.notes}, indent=2, ensure_ascii=False))
         return
     counts = {
         "level": len(read.levels), "well": len(read.wells), "stream": len(read.streams), "lake": len(read.lakes),

@@ -217,7 +217,7 @@ Pair = Annotated[
 
 def _stage_form(raw: object) -> str | None:
     if isinstance(raw, list):
-        return "pairs" if raw and isinstance(raw[0], list) else "vertices"
+        return None if not raw else "pairs" if isinstance(raw[0], list) else "vertices"
     return "level" if isinstance(raw, int | float | str) and not isinstance(raw, bool) else None
 
 

@@ -41,6 +41,10 @@ def _problems(error: ValidationError, model: type[BaseModel], data: Any, tree: T
         kind, ctx = fault["type"], fault.get("ctx") or {}
         if kind == "missing":
             key = str(loc[-1])
+            if isinstance(loc[-1], int):  # the second number of a pair
+                text = f"{_dotted((*at, *loc[:-1]))}: a pair has two entries"
+                found.append(tree.problem("form", text, (*at, *loc[:-1])))
+                continue
             # a misspelt key is one fault, not an unknown and a missing one
             if any(nearest(extra, _keys_at(model, loc[:-1], data)) == key for extra in extras.get(loc[:-1], [])):
                 continue
@@ -104,9 +108,7 @@ def _in_data(loc: tuple[int | str, ...], data: Any) -> Path_:
             elif i < len(loc) - 1:
                 continue
         elif isinstance(data, list) and isinstance(part, int):
-            if part >= len(data):
-                continue  # an entry that is missing shows at its list
-            data = data[part]
+            data = data[part] if part < len(data) else None  # the missing entry of a pair
         else:
             continue
         path.append(part)

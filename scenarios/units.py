@@ -40,6 +40,7 @@ _COMMON = {
     "angle": ["deg"],
     "number": ["%"],
 }
+_LONGEST = 1e8  # m; coordinates with the zone in front reach 6e7
 _NUMBER = r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?"
 _RAISED = str.maketrans("²³", "23")
 _QUANTITY = re.compile(rf"^\s*({_NUMBER})\s*([^\s\d].*?)?\s*$")
@@ -74,7 +75,7 @@ def quantity(text: object, dimension: str, bare: Bare | None = None) -> float:
         if not math.isfinite(text):
             raise UnitError("number", f"{text} is not a finite number")
         if dimension == "length":
-            return float(text) * bare.length
+            return _on_earth(float(text) * bare.length)
         if dimension == "number":
             return float(text)
         raise UnitError("unit", f"{text:g} needs a unit", f"write '{text:g} {common}' (allowed: {allowed(dimension)})")
@@ -95,13 +96,21 @@ def quantity(text: object, dimension: str, bare: Bare | None = None) -> float:
         return quantity(number, dimension, bare)
     table = UNITS[dimension]
     if unit in table:
-        return quantity(number * table[unit], "number")  # refuses what has grown beyond all numbers
+        value = quantity(number * table[unit], "number")  # refuses what has grown beyond all numbers
+        return _on_earth(value) if dimension == "length" else value
     help = f"allowed: {allowed(dimension)}"
     for other, units in UNITS.items():
         if unit in units and other != dimension:
             raise UnitError("unit", f"{text!r} is a {_word(other)}, but a {_word(dimension)} belongs here", help)
     near = nearest(unit, table)
     raise UnitError("unit", f"unknown unit {unit!r}", f"did you mean {near!r}? ({help})" if near else help)
+
+
+def _on_earth(length: float) -> float:
+    """A length (m) that a place on Earth can have: geometry overflows on what is far beyond."""
+    if abs(length) > _LONGEST:
+        raise UnitError("number", f"{length:g} m is longer than anything on Earth")
+    return length
 
 
 def _example(dimension: str) -> str:

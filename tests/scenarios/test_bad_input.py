@@ -115,6 +115,18 @@ def test_self_crossing_polygon_says_where(run):
     only(text, "self-crossing", "scenario.yaml:21:16", "lake Tarn", "x 200, y 570")
 
 
+def test_what_is_refused_is_not_missed_again_by_the_cases(run):
+    bow = "[[100, 500], [300, 640], [300, 500], [100, 640]]"
+    text = changed("[[100, 500], [250, 480], [300, 640], [120, 660]]", bow)
+    text = changed("cases:\n", "cases:\n  low: [{change: lakes.Tarn.stage, by: -1}, {remove: lakes.Tarn}]\n", text)
+    only(run(text), "self-crossing", "scenario.yaml:21:16")
+
+
+def test_pair_with_one_entry(run):
+    only(run(changed("at: [510, 310]", "at: [510]")), "form", "scenario.yaml:15:16", "wells.Mill 1.at", "two entries")
+    only(run(changed("at: [510, 310]", "at: [510, 310, 4]")), "form", "scenario.yaml:15:16", "at most 2 entries")
+
+
 def test_stream_digitised_from_mouth_to_source(run):
     text = run(changed("[[0, 61.5], [1, 59.4]]", "[[0, 59.4], [1, 61.5]]"))
     only(text, "uphill", "scenario.yaml:19:12", "Elm Brook", "2.1 m", "reverse the line")

@@ -102,9 +102,10 @@ def test_other_ways_to_give_a_stage(tmp_path, stage, levels):
     assert read(tmp_path, changed("[[0, 61.5], [1, 59.4]]", stage)).streams[0].stage == pytest.approx(levels)
 
 
-@pytest.mark.parametrize("stage", ["[61, 60]", "[[0, 61], [0.5, 60]]", "[[0, 61], [0, 60], [1, 59]]"])
+@pytest.mark.parametrize("stage", ["[61, 60]", "[[0, 61], [0.5, 60]]", "[[0, 61]]", "[[0, 61], [0, 60], [1, 59]]"])
 def test_stages_that_do_not_fit_the_line(tmp_path, stage):
     assert rules(tmp_path, changed("[[0, 61.5], [1, 59.4]]", stage)) == ["stage"]
+    assert rules(tmp_path, changed("[[0, 61.5], [1, 59.4]]", "[]")) == ["form"]
 
 
 def test_bed(tmp_path):

@@ -83,6 +83,8 @@ def test_bare_lengths_take_the_unit_of_the_site():
         ("dry", "length", "is not a number"),
         ("<12.3", "length", "is not a number"),
         ([1], "length", "expected a number"),
+        (1e300, "length", "longer than anything on Earth"),
+        ("1e9 km", "length", "longer than anything on Earth"),
         ("1 000 m3/d", "rate", "is not a number"),
     ],
 )
