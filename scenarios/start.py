@@ -132,7 +132,8 @@ def _scenario(title: str, table: _Table | None) -> str:
     spread = max((high - low) / 2.0, 0.5)
     side = float(np.ptp(xyh[:, :2], axis=0).max()) or 1000.0
     gradient, towards = _plane(xyh)
-    base = math.floor(low - max(30.0, high - low))
+    # deep enough that the ground stays wet in the drawn corners, where the fitted flow falls beyond the levels
+    base = math.floor(low - max(30.0, 2.0 * (high - low)))
     place = f"[{x:.1f}, {y:.1f}]"
     return f"""# A first scenario. What is marked GUESSED is no knowledge: mend it, then delete the word.
 # For help while typing, keep the next line and write the file with: wellshed schema > scenario.schema.json
@@ -175,7 +176,7 @@ def _short(number: float) -> str:
 
 def _draw(table: _Table | None, x: float, y: float, side: float) -> str:
     if table is not None:
-        return f"{{around: levels, by: {float(f'{side / 5:.1g}'):g}}}      # GUESSED"
+        return f"{{around: levels, by: {float(f'{side / 10:.1g}'):g}}}      # GUESSED"
     return f"{{x: [{x - side:g}, {x + side:g}], y: [{y - side:g}, {y + side:g}]}}      # GUESSED"
 
 
