@@ -11,7 +11,7 @@ from .recharge import RechargeArea, signed_area
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-N_RING_MOMENT = 36
+N_RING_MOMENT = 36  # a ring is far beyond three of its radii
 
 
 class FieldArrays(NamedTuple):
@@ -26,7 +26,8 @@ class FieldArrays(NamedTuple):
     coef: Floats  # (p, N_COEF) strengths a_n (m2/d)
     jump: Floats  # (p,) vortex: potential jump (m3/d) carried along the whole panel
     moment: Floats  # (p, N_MOMENT) far moments times L/(2 pi)
-    edge: Floats  # (e, 4) x1, y1, x2, y2 of the recharge rings
+    log_moment: Floats  # (p, N_MOMENT) the same over their order, 0 for order 0: the series of the potential
+    edge: Floats  # (e, 7) x1, y1, x2, y2, unit vector along, length of the edges of recharge rings
     ring_start: Ints  # (r + 1,) first edge of each ring
     ring: Floats  # (r, 5) middle x, y, radius, rate, signed area
     ring_moment: NDArray[np.complex128]  # (r, N_RING_MOMENT) int ((z - c)/radius)^k dA
@@ -75,13 +76,22 @@ def panel_moments(panels: Panels, coef: Floats) -> Floats:
     return out * (panels.panel[:, 8] / (2.0 * np.pi))[:, None]
 
 
+def log_moments(moment: Floats) -> Floats:
+    """Moments (p, N_MOMENT) over their order, for the potential; that of order 0 goes with the logarithm."""
+    order = np.arange(N_MOMENT, dtype=float)
+    return np.ascontiguousarray(moment[:, :] / np.maximum(order, 1.0) * (order > 0))
+
+
 def ring_arrays(areas: list[RechargeArea], x0: float, y0: float) -> tuple[Floats, Ints, Floats, np.ndarray]:
     """Edges, first edges, ring rows and ring moments of recharge areas, local to the origin x0, y0 (m)."""
-    edges, starts, rings, moments = [np.zeros((0, 4))], [0], [], []
+    edges, starts, rings, moments = [np.zeros((0, 7))], [0], [], []
     for area in areas:
         for rx, ry in area.rings():
             x, y = rx - x0, ry - y0
-            edges.append(np.stack([x, y, np.roll(x, -1), np.roll(y, -1)], axis=1))
+            dx, dy = np.roll(x, -1) - x, np.roll(y, -1) - y
+            length = np.hypot(dx, dy)
+            columns = [x, y, np.roll(x, -1), np.roll(y, -1), dx / length, dy / length, length]
+            edges.append(np.stack(columns, axis=1))
             starts.append(starts[-1] + x.size)
             cx, cy = 0.5 * (x.min() + x.max()), 0.5 * (y.min() + y.max())
             radius = float(np.hypot(x - cx, y - cy).max())

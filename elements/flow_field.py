@@ -8,7 +8,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from . import kernels_field
 from .aquifer import Aquifer
-from .field_arrays import FieldArrays, Floats, Panels, no_panels, panel_moments, ring_arrays
+from .field_arrays import FieldArrays, Floats, Panels, log_moments, no_panels, panel_moments, ring_arrays
 from .kernels_line import N_COEF
 from .recharge import RechargeArea
 from .regional_flow import RegionalFlow
@@ -96,13 +96,15 @@ def superpose(
     shape = no_panels() if panels is None else panels
     strengths = np.zeros((len(shape.kind), N_COEF)) if coef is None else np.ascontiguousarray(coef, dtype=float)
     jumps = np.zeros(len(shape.kind)) if jump is None else np.ascontiguousarray(jump, dtype=float)
+    moment = panel_moments(shape, strengths)
     arrays = FieldArrays(
         uniform,
         np.array(rows, dtype=float).reshape(-1, 4),
         *shape,
         strengths,
         jumps,
-        panel_moments(shape, strengths),
+        moment,
+        log_moments(moment),
         *ring_arrays(list(areas), x0, y0),
     )
     return FlowField(aquifer, arrays, origin)

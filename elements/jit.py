@@ -38,7 +38,9 @@ def _cache_folder() -> Path:
 if "NUMBA_CACHE_DIR" not in os.environ:
     numba.config.CACHE_DIR = str(_cache_folder())
 
-# Division by zero gives inf instead of a hidden branch (which would stop vectorisation), NaN stays NaN: no fastmath.
-kernel = numba.njit(cache=True, error_model="numpy")
-parallel_kernel = numba.njit(cache=True, error_model="numpy", parallel=True)
+# Division by zero gives inf instead of a hidden branch (which would stop vectorisation). Of fastmath only the fusing
+# of a product with a sum: the series and recurrences are chains of them. NaN stays NaN, zero keeps its sign.
+_FLAGS = {"cache": True, "error_model": "numpy", "fastmath": {"contract"}}
+kernel = numba.njit(**_FLAGS)
+parallel_kernel = numba.njit(parallel=True, **_FLAGS)
 prange = numba.prange

@@ -15,33 +15,29 @@ from .jit import kernel
 
 
 @kernel
-def edge_log_integral(x, y, x1, y1, x2, y2):
-    """I (m), d (m) and outward normal (nx, ny) of the edge 1 -> 2 seen from x, y: I = int ln r dl (r in m)."""
-    ex = x2 - x1
-    ey = y2 - y1
-    length = np.sqrt(ex * ex + ey * ey)
-    tx = ex / length
-    ty = ey / length
-    nx = ty
-    ny = -tx
-    ax = x1 - x
-    ay = y1 - y
-    bx = x2 - x
-    by = y2 - y
+def log_distance2(x, y, x1, y1):
+    """Ln r^2 from a corner; 0 on it, where every product with it vanishes."""
+    r2 = (x1 - x) ** 2 + (y1 - y) ** 2
+    return np.log(r2) if r2 > 0.0 else 0.0
+
+
+@kernel
+def edge_log_integral(x, y, edge, e, log1, log2):
+    """I (m) and d (m) of row e of the edges seen from x, y, with ln r^2 of its ends: I = int ln r dl (r in m)."""
+    tx = edge[e, 4]
+    ty = edge[e, 5]
+    ax = edge[e, 0] - x
+    ay = edge[e, 1] - y
+    bx = edge[e, 2] - x
+    by = edge[e, 3] - y
     s1 = ax * tx + ay * ty
     s2 = bx * tx + by * ty
-    d = ax * nx + ay * ny if abs(s1) < abs(s2) else bx * nx + by * ny
-    r1 = ax * ax + ay * ay
-    r2 = bx * bx + by * by
-    total = -length
-    if r1 > 0.0:
-        total -= 0.5 * s1 * np.log(r1)
-    if r2 > 0.0:
-        total += 0.5 * s2 * np.log(r2)
+    d = ax * ty - ay * tx if abs(s1) < abs(s2) else bx * ty - by * tx
+    total = 0.5 * (s2 * log2 - s1 * log1) - edge[e, 6]
     if d != 0.0:
         # the angle under which the edge is seen, in (-pi, pi)
         total += d * np.arctan2(d * (s2 - s1), d * d + s1 * s2)
-    return total, d, nx, ny
+    return total, d
 
 
 @kernel

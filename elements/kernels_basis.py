@@ -7,7 +7,7 @@ form of ``kernels_line``, with ``doublets`` giving the potential of a unit jump 
 import numpy as np
 
 from .jit import parallel_kernel, prange
-from .kernels_field import NEAR2, constant_doublet, far_place, panel_place
+from .kernels_field import NEAR2, constant_doublet, panel_place
 from .kernels_line import N_WORK, far_terms, near_derivatives, near_potentials
 
 
@@ -22,16 +22,22 @@ def basis_potentials(x, y, panels, first, tables, log_scale, out):
         powers = np.empty(tables.shape[2])
         for p in range(panels.kind.size):
             c = panels.panel[p, 8] / (2.0 * np.pi)
-            z2, tr, ti, _, _, d2 = far_place(x[i], y[i], panels.panel, p)
+            dx = x[i] - panels.panel[p, 4]
+            dy = y[i] - panels.panel[p, 5]
+            hx = panels.panel[p, 6]
+            hy = panels.panel[p, 7]
+            d2 = dx * dx + dy * dy
+            h2 = hx * hx + hy * hy
             n_coef = panels.n_coef[p]
-            if z2 > NEAR2 and panels.vortex[p] == 0:
+            if d2 > NEAR2 * h2 and panels.vortex[p] == 0:
                 table = tables[panels.kind[p]]
-                k_max = far_terms(z2)
-                power = complex(tr, ti)
+                k_max = far_terms(d2 / h2)
+                t = complex((hx * dx + hy * dy) / d2, (hy * dx - hx * dy) / d2)
+                power = t
                 powers[0] = -(0.5 * np.log(d2) - log_scale)
                 for k in range(1, k_max):
                     powers[k] = power.real / k
-                    power *= complex(tr, ti)
+                    power *= t
                 for n in range(n_coef):
                     total = 0.0
                     for k in range(k_max):

@@ -8,11 +8,11 @@ not depend on the number of threads.
 import numpy as np
 
 from .jit import kernel, parallel_kernel, prange
-from .kernels_area import edge_log_integral, inside_ring_crossings
+from .kernels_area import edge_log_integral, inside_ring_crossings, log_distance2
 from .kernels_line import (
     N_WORK,
     NEAR,
-    far_log_series,
+    divide,
     far_series,
     far_terms,
     near_derivatives,
@@ -21,46 +21,29 @@ from .kernels_line import (
 from .kernels_point import discharge_well, potential_well
 
 NEAR2 = NEAR * NEAR
+FAR_RING2 = 9.0
 
 
 @kernel
 def panel_place(x, y, panel, p):
     """Tau and 1 - tau of the point on panel p, each from its own end."""
     direction = complex(2.0 * panel[p, 6], 2.0 * panel[p, 7])
-    tau = complex(x - panel[p, 0], y - panel[p, 1]) / direction
-    rest = complex(panel[p, 2] - x, panel[p, 3] - y) / direction
+    tau = divide(complex(x - panel[p, 0], y - panel[p, 1]), direction)
+    rest = divide(complex(panel[p, 2] - x, panel[p, 3] - y), direction)
     return tau, rest
 
 
 @kernel
-def far_place(x, y, panel, p):
-    """|Z|^2 and t = h/(z - c) of the point, and 1/(z - c) (zero where the point is the middle)."""
-    dx = x - panel[p, 4]
-    dy = y - panel[p, 5]
-    hx = panel[p, 6]
-    hy = panel[p, 7]
-    d2 = dx * dx + dy * dy
-    h2 = hx * hx + hy * hy
-    inv = 1.0 / d2 if d2 > 0.0 else 0.0
-    return d2 / h2, (hx * dx + hy * dy) * inv, (hy * dx - hx * dy) * inv, dx * inv, -dy * inv, d2
-
-
-@kernel
-def panel_potential(x, y, p, f, work):
-    """Complex potential Omega (m3/d) of panel p as a sink; order 0 of the imaginary part in doublet form."""
-    z2, tr, ti, _, _, d2 = far_place(x, y, f.panel, p)
-    log_scale = f.uniform[5]
-    if z2 > NEAR2 and f.vortex[p] == 0:
-        sr, si = far_log_series(f.moment[p], far_terms(z2), tr, ti)
-        return f.moment[p, 0] * (0.5 * np.log(d2) - log_scale) - sr, -si
-    tau, rest = panel_place(x, y, f.panel, p)
-    near_potentials(f.kind[p], tau, rest, f.n_coef[p], work[0], work[1])
-    length = f.panel[p, 8]
-    re = f.coef[p, 0] * (np.log(length) - log_scale)
+def near_panel_potential(x, y, p, panel, kind, n_coef, coef, log_scale, work):
+    """Complex potential Omega (m3/d) of panel p by the closed form; order 0 of the imaginary part as a doublet."""
+    tau, rest = panel_place(x, y, panel, p)
+    near_potentials(kind[p], tau, rest, n_coef[p], work[0], work[1])
+    length = panel[p, 8]
+    re = coef[p, 0] * (np.log(length) - log_scale)
     im = 0.0
-    for n in range(f.n_coef[p]):
-        re += f.coef[p, n] * work[1, n].real
-        im += f.coef[p, n] * work[1, n].imag
+    for n in range(n_coef[p]):
+        re += coef[p, n] * work[1, n].real
+        im += coef[p, n] * work[1, n].imag
     c = length / (2.0 * np.pi)
     return c * re, c * im
 
@@ -73,61 +56,58 @@ def constant_doublet(x, y, panel, p):
 
 
 @kernel
-def panel_discharge(x, y, p, f, work):
-    """Qx and -Qy (m2/d) of panel p as a sink: W = -dOmega/dz."""
-    z2, tr, ti, ir, ii, _ = far_place(x, y, f.panel, p)
-    if z2 > NEAR2:
-        sr, si = far_series(f.moment[p], far_terms(z2), tr, ti)
-        return -(sr * ir - si * ii), -(sr * ii + si * ir)
-    tau, rest = panel_place(x, y, f.panel, p)
-    near_derivatives(f.kind[p], tau, rest, f.n_coef[p], work[0], work[1])
+def near_discharge(x, y, p, panel, kind, n_coef, coef, work):
+    """Qx and -Qy (m2/d) of panel p as a sink by the closed form: W = -dOmega/dz."""
+    tau, rest = panel_place(x, y, panel, p)
+    near_derivatives(kind[p], tau, rest, n_coef[p], work[0], work[1])
     total = 0.0j
-    for n in range(f.n_coef[p]):
-        total += f.coef[p, n] * work[1, n]
-    w = -f.panel[p, 8] / (2.0 * np.pi) * total / complex(2.0 * f.panel[p, 6], 2.0 * f.panel[p, 7])
+    for n in range(n_coef[p]):
+        total += coef[p, n] * work[1, n]
+    w = divide(-panel[p, 8] / (2.0 * np.pi) * total, complex(2.0 * panel[p, 6], 2.0 * panel[p, 7]))
     return w.real, w.imag
 
 
 @kernel
-def rings_at(x, y, f, want_potential):
+def rings_at(x, y, ring, ring_start, ring_moment, edge, log_scale, want_potential):
     """Potential (m3/d, if wanted) and discharge (m2/d) of all recharge rings."""
     phi = 0.0
     qx = 0.0
     qy = 0.0
-    log_scale = f.uniform[5]
-    for r in range(f.ring.shape[0]):
-        dx = x - f.ring[r, 0]
-        dy = y - f.ring[r, 1]
-        radius = f.ring[r, 2]
-        rate = f.ring[r, 3] / (2.0 * np.pi)
+    for r in range(ring.shape[0]):
+        dx = x - ring[r, 0]
+        dy = y - ring[r, 1]
+        radius = ring[r, 2]
+        rate = ring[r, 3] / (2.0 * np.pi)
         if rate == 0.0:
             continue
         d2 = dx * dx + dy * dy
         z2 = d2 / (radius * radius)
-        if z2 > NEAR2:
+        if z2 > FAR_RING2:
             inv = complex(dx, -dy) / d2
             t = radius * inv
             total = 0.0j
             logs = 0.0j
             for k in range(far_terms(z2) - 1, 0, -1):
-                m = f.ring_moment[r, k]
+                m = ring_moment[r, k]
                 total = (total + m) * t
                 if want_potential:
                     logs = (logs + m / k) * t
-            w = rate * inv * (f.ring_moment[r, 0] + total)
+            w = rate * inv * (ring_moment[r, 0] + total)
             qx += w.real
             qy -= w.imag
             if want_potential:
-                phi -= rate * (f.ring[r, 4] * (0.5 * np.log(d2) - log_scale) - logs.real)
+                phi -= rate * (ring[r, 4] * (0.5 * np.log(d2) - log_scale) - logs.real)
             continue
-        for e in range(f.ring_start[r], f.ring_start[r + 1]):
-            integral, d, nx, ny = edge_log_integral(x, y, f.edge[e, 0], f.edge[e, 1], f.edge[e, 2], f.edge[e, 3])
-            qx -= rate * nx * integral
-            qy -= rate * ny * integral
-            if want_potential:
-                length = np.sqrt((f.edge[e, 2] - f.edge[e, 0]) ** 2 + (f.edge[e, 3] - f.edge[e, 1]) ** 2)
-                phi -= rate * d * (0.5 * integral - 0.25 * length)
-        phi += rate * f.ring[r, 4] * log_scale
+        first = ring_start[r]
+        log1 = log_distance2(x, y, edge[first, 0], edge[first, 1])
+        for e in range(first, ring_start[r + 1]):
+            log2 = log_distance2(x, y, edge[e, 2], edge[e, 3])
+            integral, d = edge_log_integral(x, y, edge, e, log1, log2)
+            log1 = log2
+            qx -= rate * edge[e, 5] * integral
+            qy += rate * edge[e, 4] * integral
+            phi -= rate * d * (0.5 * integral - 0.25 * edge[e, 6])
+        phi += rate * ring[r, 4] * log_scale
     return phi, qx, qy
 
 
@@ -149,15 +129,35 @@ def potential_at(x, y, f, work):
     """Discharge potential Phi (m3/d) at a point in local coordinates (m)."""
     u = f.uniform
     phi = u[4] - u[0] * (x - u[2]) - u[1] * (y - u[3])
-    for w in range(f.wells.shape[0]):
-        phi += potential_well(x - f.wells[w, 0], y - f.wells[w, 1], f.wells[w, 2], f.wells[w, 3], np.exp(u[5]))
-    for p in range(f.kind.shape[0]):
-        re, im = panel_potential(x, y, p, f, work)
-        if f.vortex[p] == 0:
-            phi += re
+    wells = f.wells
+    scale = np.exp(u[5])
+    for w in range(wells.shape[0]):
+        phi += potential_well(x - wells[w, 0], y - wells[w, 1], wells[w, 2], wells[w, 3], scale)
+    panel, kind, vortex, n_coef, coef = f.panel, f.kind, f.vortex, f.n_coef, f.coef
+    moment, log_moment, jump = f.moment, f.log_moment, f.jump
+    for p in range(kind.shape[0]):
+        dx = x - panel[p, 4]
+        dy = y - panel[p, 5]
+        hx = panel[p, 6]
+        hy = panel[p, 7]
+        d2 = dx * dx + dy * dy
+        h2 = hx * hx + hy * hy
+        if d2 > NEAR2 * h2:
+            inv = 1.0 / d2
+            tr = (hx * dx + hy * dy) * inv
+            ti = (hy * dx - hx * dy) * inv
+            sr, si = far_series(log_moment, p, far_terms(d2 / h2), tr, ti)
+            if vortex[p] == 0:
+                phi += moment[p, 0] * (0.5 * np.log(d2) - u[5]) - sr
+            else:
+                # as a doublet, order 0 has ln((z - c)/(z - z2)) = -ln(1 - t) in place of ln(z - c); a constant
+                # jump has ln((z - z1)/(z - z2)) = ln((1 + t)/(1 - t))
+                phi += moment[p, 0] * -np.arctan2(-ti, 1.0 - tr) - si
+                phi += jump[p] * np.arctan2(2.0 * ti, 1.0 - tr * tr - ti * ti) / (2.0 * np.pi)
         else:
-            phi += im + f.jump[p] * constant_doublet(x, y, f.panel, p)
-    area, _, _ = rings_at(x, y, f, True)
+            re, im = near_panel_potential(x, y, p, panel, kind, n_coef, coef, u[5], work)
+            phi += re if vortex[p] == 0 else im + jump[p] * constant_doublet(x, y, panel, p)
+    area, _, _ = rings_at(x, y, f.ring, f.ring_start, f.ring_moment, f.edge, u[5], True)
     return phi + area
 
 
@@ -167,19 +167,36 @@ def discharge_at(x, y, f, work):
     u = f.uniform
     qx = u[0]
     qy = u[1]
-    for w in range(f.wells.shape[0]):
-        a, b = discharge_well(x - f.wells[w, 0], y - f.wells[w, 1], f.wells[w, 2], f.wells[w, 3])
+    wells = f.wells
+    for w in range(wells.shape[0]):
+        a, b = discharge_well(x - wells[w, 0], y - wells[w, 1], wells[w, 2], wells[w, 3])
         qx += a
         qy += b
-    for p in range(f.kind.shape[0]):
-        a, b = panel_discharge(x, y, p, f, work)
-        if f.vortex[p] == 0:
+    # the arrays by name: a call with the whole field would copy it for every panel
+    panel, kind, vortex, n_coef, coef, moment = f.panel, f.kind, f.vortex, f.n_coef, f.coef, f.moment
+    for p in range(kind.shape[0]):
+        dx = x - panel[p, 4]
+        dy = y - panel[p, 5]
+        hx = panel[p, 6]
+        hy = panel[p, 7]
+        d2 = dx * dx + dy * dy
+        h2 = hx * hx + hy * hy
+        if d2 > NEAR2 * h2:
+            inv = 1.0 / d2
+            tr = (hx * dx + hy * dy) * inv
+            ti = (hy * dx - hx * dy) * inv
+            sr, si = far_series(moment, p, far_terms(d2 / h2), tr, ti)
+            a = -(sr * dx + si * dy) * inv
+            b = -(si * dx - sr * dy) * inv
+        else:
+            a, b = near_discharge(x, y, p, panel, kind, n_coef, coef, work)
+        if vortex[p] == 0:
             qx += a
             qy -= b
         else:  # times -i: W = b - i a
             qx += b
             qy += a
-    _, a, b = rings_at(x, y, f, False)
+    _, a, b = rings_at(x, y, f.ring, f.ring_start, f.ring_moment, f.edge, u[5], False)
     return qx + a, qy + b
 
 

@@ -26,7 +26,7 @@ def zones_of(case: CaseAnswer, context: Context, options: Any) -> list[Result]:
     if not wells:
         return []
     obstacles = obstacles_of(case)
-    saddles = [p for p in stagnation_points(case.solution.flow, obstacles) if p.kind == "saddle"]
+    saddles = [p for p in stagnation_points(case.solution.flow, obstacles_of(case, 0.25)) if p.kind == "saddle"]
     reached = _reached(case, saddles, obstacles)
     taken: set[str] = set()
     out = []

@@ -5,7 +5,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from ..solver.boundary import Solution, solve_places
+from ..solver.boundary import Solution, solution_of, solve_places
 from ..solver.fit import FitResult, fit
 from ..solver.ground import ground_covariance
 from ..solver.inputs import Inputs, Parameter, Solved, solve_inputs, with_values
@@ -14,6 +14,7 @@ from .scenario import Scenario
 
 CONFLICT = 2.0  # prior sds between prior and posterior that call for a warning
 DOUBT = 0.01  # chance below which the readings' own errors do not explain the residuals
+MOST_TURNS = 6
 OPEN = 0.5  # share of the prior's spread that a direction keeps when the data say little about it
 
 Progress = Callable[[str], None]
@@ -59,19 +60,23 @@ def fit_scenario(scenario: Scenario, model: Model, progress: Progress = lambda _
 
 
 def settle(model: Model, inputs: Inputs, tolerance: float, like: Solution | None = None) -> tuple[Solution, Solved]:
-    """Solve inputs to the tolerance; the strength of a regional gradient and the mesh follow each other."""
-    mesh = None if like is None else like.state.system.mesh
-    solution = solve_places(
-        model.places, inputs.setting if like is None else like.state.setting, tolerance=tolerance, mesh=mesh
-    )
-    for _ in range(6):
+    """Solve inputs to the tolerance, on the mesh of ``like`` where it serves.
+
+    The strength of a regional gradient depends on the field, the mesh on both: refine until they agree.
+    """
+    solution = like or solve_places(model.places, inputs.setting, tolerance=tolerance)
+    for _ in range(MOST_TURNS):
         solved = solve_inputs(solution.state.system, inputs)
-        solution = solve_places(
-            model.places, solved.state.setting, tolerance=tolerance, mesh=solution.state.system.mesh
-        )
-        if solution.state.system.mesh.edge.size == solved.state.system.mesh.edge.size:
+        solution = solution_of(model.places, solved.state, tolerance)
+        if solution.boundary.met:
             break
-    return solution, solve_inputs(solution.state.system, inputs, None)
+        unknowns = solution.boundary.unknowns
+        mesh = solution.state.system.mesh
+        solution = solve_places(model.places, solved.state.setting, tolerance=tolerance, mesh=mesh)
+        if solution.boundary.unknowns == unknowns:  # no mesh does better
+            solution = solution_of(model.places, solved.state, tolerance)
+            break
+    return solution, solved
 
 
 def natural(parameter: Parameter, model: Model, theta: float) -> float:

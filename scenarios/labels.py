@@ -52,6 +52,15 @@ class Labels:
             placed.remove()
         return None
 
+    def centred(self, x: float, y: float, text: str, **style: object) -> Text | None:
+        """A label with its middle at x, y; None where that place is taken."""
+        halo = [withStroke(linewidth=2.0, foreground="white")]
+        placed = self.axes.text(x, y, text, ha="center", va="center", path_effects=halo, **style)
+        if self._free(placed):
+            return placed
+        placed.remove()
+        return None
+
     def along(self, line: np.ndarray, text: str, candidates: int = 15, **style: object) -> Text | None:
         """A label on a line (n, 2), turned with it, at the first of some evenly spread places that is free."""
         if len(line) < 2:

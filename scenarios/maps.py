@@ -63,13 +63,13 @@ def _frame(figure: Figure, box: tuple[float, float, float, float], page: tuple[f
     axes.set_aspect("equal")
     for axis, low, high in ((axes.xaxis, x0, x1), (axes.yaxis, y0, y1)):
         step = _round_step((high - low) / 5.5)
-        axis.set_ticks(np.arange(np.ceil(low / step), np.floor(high / step) + 0.5) * step)
-        axis.set_major_formatter(lambda value, _: f"{value:,.0f}".replace(",", "\u2009"))
+        axis.set_ticks(np.arange(np.ceil(low / step), np.floor(high / step) + 0.5) * step + 0.0)
+        axis.set_major_formatter(lambda value, _: f"{value + 0.0:,.0f}".replace(",", "\u2009"))
     axes.tick_params(axis="y", labelrotation=90)
     for label in axes.get_yticklabels():
         label.set_verticalalignment("center")
     axes.set_xlabel("x (m)", labelpad=1)
-    axes.set_ylabel("y (m)", labelpad=1)
+    axes.set_ylabel("y (m)", labelpad=3)
     return axes
 
 
@@ -217,7 +217,7 @@ def _names(labels: Labels, content: MapContent) -> None:
         labels.beside(w.x, w.y, f"{w.name}\n{abs(w.rate):.4g} m3/d", 6.5, fontsize=7.5, fontweight="bold", zorder=14)
     for name, stage, ring in content.lakes:
         x, y = ring.mean(axis=0)
-        placed = labels.beside(x, y, f"{name} {stage:.2f}", 0.1, fontsize=7.5, color=DEEP, style="italic", zorder=13)
+        placed = labels.centred(x, y, f"{name}\n{stage:.2f}", fontsize=7.5, color=DEEP, style="italic", zorder=13)
         if placed is None:
             labels.along(
                 np.concatenate([ring, ring[:1]]),
@@ -255,7 +255,7 @@ def _margin(figure: Figure, axes: Axes, content: MapContent, handles: list[Any],
         handles=handles, loc="upper left", bbox_to_anchor=(frame.x0 - 0.008, below), ncols=columns, frameon=False, fontsize=6.6,
         handlelength=2.6, columnspacing=1.4, labelspacing=0.45, borderaxespad=0.0,
     )  # fmt: skip
-    _scale_bar(figure, axes, content, frame.x1, below - 0.12 / page[1], page)
+    _scale_bar(figure, axes, content, frame.x1, frame.y1 + 0.3 / page[1], page)
     figure.text(
         0.5 * SIDE / page[0],
         0.14 / page[1],

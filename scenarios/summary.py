@@ -19,7 +19,8 @@ def parameter_rows(scenario: Scenario, model: Model, fitted: Fitted) -> list[dic
             prior |= {"factor": float(np.exp(p.sd))} if p.log else {"sd": p.sd}
         if fitted.result is None:
             sd = None if np.isinf(p.sd) else (prior_value * p.sd if p.log else p.sd)
-            rows.append({"name": p.name, "value": prior_value, "sd": sd, "unit": p.unit, "prior": prior, "informed": 0.0,
+            rows.append({"name": p.name, "value": prior_value, "sd": sd, "unit": p.unit, "prior": prior,
+                         "informed": 0.0,
                          "interval_90": None})  # fmt: skip
             continue
         low, high = fitted.result.interval(k)
@@ -33,7 +34,8 @@ def parameter_rows(scenario: Scenario, model: Model, fitted: Fitted) -> list[dic
     if porosity.kind != "known":
         prior = {"value": porosity.value, "kind": porosity.kind, "sd": porosity.sd, "factor": porosity.factor}
         sd = porosity.sd if porosity.factor is None else porosity.value * float(np.log(porosity.factor))
-        rows.append({"name": porosity.path, "value": porosity.value, "sd": sd, "unit": "1", "prior": prior, "informed": 0.0,
+        rows.append({"name": porosity.path, "value": porosity.value, "sd": sd, "unit": "1", "prior": prior,
+                     "informed": 0.0,
                      "interval_90": None})  # fmt: skip
     return rows
 

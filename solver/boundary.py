@@ -100,6 +100,13 @@ def solve_places(places: Places, setting: Setting, *, tolerance: float, mesh: Me
     return Solution(flow_of(places, state), report, balance_rows(places, state), places, state)
 
 
+def solution_of(places: Places, state: State, tolerance: float) -> Solution:
+    """The solution of a state on the mesh it has, checked; ``boundary.met`` tells whether the mesh serves."""
+    rows, misfit = check_misfit(places, state)
+    report = _report(places, rows, misfit, tolerance, state.system.mesh, 1)
+    return Solution(flow_of(places, state), report, balance_rows(places, state), places, state)
+
+
 def check_misfit(places: Places, state: State, u: Floats | None = None) -> tuple[Rows, Floats]:
     """Misfit (m of head) of a state at mapped coordinates u of every panel (the check points unless given)."""
     system, setting = state.system, state.setting

@@ -13,6 +13,7 @@ from ..elements.jit import kernel, parallel_kernel, prange
 from ..elements.kernels_field import discharge_at, potential_at, recharge_at
 from ..elements.kernels_line import N_WORK
 from .endings import Ending
+from .obstacles import WALL
 
 A = np.array(
     [
@@ -39,7 +40,9 @@ P = np.array(
 )
 LAND = 1e-5  # m: this near to a line a particle has arrived
 ASIDE = 1e-3  # m: where the flow on both banks is looked at, and where a particle goes on
+SLIP = 0.05  # of its length: a step may end this far behind an impermeable side, and is then set back before it
 MOST_REDO = 200
+MOST_CRAWL = 12  # this many steps of mm along a wall: the particle has come to a divide on it
 
 WELL, STREAM = int(Ending.WELL), int(Ending.STREAM)
 DRAWN_AREA, STAGNATION, TIME = int(Ending.DRAWN_AREA), int(Ending.STAGNATION), int(Ending.TIME)
@@ -84,6 +87,21 @@ def first_crossing(x0, y0, x1, y1, segment):
 
 
 @kernel
+def before_wall(x0, y0, x1, y1, segment):
+    """The place next to a wall, on the side of point 0, where point 1 behind it is set back to; how far it was."""
+    ux = segment[2] - segment[0]
+    uy = segment[3] - segment[1]
+    length = np.sqrt(ux * ux + uy * uy)
+    nx = -uy / length
+    ny = ux / length
+    before = (x0 - segment[0]) * nx + (y0 - segment[1]) * ny
+    after = (x1 - segment[0]) * nx + (y1 - segment[1]) * ny
+    side = 1.0 if before > 0.0 else -1.0
+    shift = side * ASIDE - after
+    return x1 + shift * nx, y1 + shift * ny, abs(after)
+
+
+@kernel
 def follow(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks, points, share, work):
     """Follow one particle from x, y (local m), sign +1 with the flow, -1 against it.
 
@@ -110,6 +128,7 @@ def follow(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks
     reason = 0
     named = -1
     redo = 0
+    crawl = -1  # short steps in a row since the particle last slid along a wall, -1 before it ever did
     box = obstacles.box
     size = max(box[1] - box[0], box[3] - box[2])
     recharged = f.ring.shape[0] > 0
@@ -174,8 +193,35 @@ def follow(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks
         crossing, segment = first_crossing(x, y, x_new, y_new, obstacles.segment)
         if segment >= 0:
             chord = np.sqrt((x_new - x) ** 2 + (y_new - y) ** 2)
-            if crossing * chord > LAND:
-                h *= max(crossing * (1.0 - 1e-3) - 0.3 * LAND / chord, 0.05)
+            wall = obstacles.ending[segment] == WALL
+            behind = 0.0
+            if wall:
+                x_set, y_set, behind = before_wall(x, y, x_new, y_new, obstacles.segment[segment])
+                if behind <= SLIP * chord + ASIDE:
+                    # no water crosses it: what carried the particle over is the step's own error
+                    moved = np.sqrt((x_set - x) ** 2 + (y_set - y) ** 2)
+                    crawl = crawl + 1 if crawl >= 0 and moved < 5.0 * ASIDE else 0
+                    if crawl > MOST_CRAWL:
+                        reason = STAGNATION
+                        break
+                    x, y, t = x_set, y_set, t + h
+                    phi = potential_at(x, y, f, work)
+                    points[n_points, 0] = x
+                    points[n_points, 1] = y
+                    points[n_points, 2] = t
+                    n_points += 1
+                    redo = 0
+                    fresh = False
+                    h *= min(grow, 2.0)
+                    while next_mark < marks.size and marks[next_mark] <= t:
+                        at_marks[next_mark, 0] = x
+                        at_marks[next_mark, 1] = y
+                        next_mark += 1
+                    if t >= t_max:
+                        reason = TIME
+                    continue
+            if wall or crossing * chord > LAND:
+                h *= 0.5 if wall else max(crossing * (1.0 - 1e-3) - 0.3 * LAND / chord, 0.05)
                 redo += 1
                 continue
             # arrived: what does the water do on the other bank?
@@ -260,6 +306,10 @@ def follow(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks
             y_new = y + s * (y_new - y)
             t_new = t + s * h
             reason = DRAWN_AREA
+        if crawl >= 0:
+            crawl = crawl + 1 if np.sqrt((x_new - x) ** 2 + (y_new - y) ** 2) < 5.0 * ASIDE else 0
+            if crawl > MOST_CRAWL and reason == 0:
+                reason = STAGNATION
         x, y, t, phi = x_new, y_new, t_new, phi_new
         points[n_points, 0] = x
         points[n_points, 1] = y

@@ -13,6 +13,7 @@ from ..elements.stream import Stream
 from .endings import Ending
 
 Floats = NDArray[np.float64]
+WALL = -1  # code of an impermeable segment: nothing ends there, water slides along it
 Line = Stream | LakeEdge | Outline
 
 
@@ -57,5 +58,5 @@ def make_obstacles(lines: Sequence[Line], box: tuple[float, float, float, float]
 
 def _ending(line: Line) -> int:
     if isinstance(line, Outline):
-        return int(Ending.OUTLINE)
+        return int(Ending.OUTLINE) if line.inflow != 0.0 else WALL
     return int(Ending.LAKE if isinstance(line, LakeEdge) else Ending.STREAM)

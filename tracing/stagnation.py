@@ -81,7 +81,7 @@ def _slopes(flow: FlowField, place: Floats, h: float) -> Floats:
 def _newton(flow: FlowField, place: Floats, typical: float, most_step: float) -> Floats:
     place = place.copy()
     done = np.zeros(len(place), dtype=bool)
-    for _ in range(40):
+    for _ in range(25):
         active = np.flatnonzero(~done)
         if active.size == 0:
             break

@@ -19,11 +19,12 @@ from .obstacles import Obstacles
 from .pathlines import Pathlines, trace
 
 Floats = NDArray[np.float64]
-FIRST_PATHS = 72
+FIRST_PATHS = 144
 MOST_PATHS = 1500
-PARTED = 1e-11  # rad: neighbours that start this close and still part have a dividing line between them
-SPREAD = 0.03  # of the zone's size: neighbours farther apart get another pathline between them
-N_MARKS = 48
+PARTED = 1e-8  # rad: neighbours that start this close and still part have a dividing line between them
+WIDE = 0.05  # of the zone's size: neighbouring pathlines farther apart get others between them
+FRONT = 0.03  # of a front's size: neighbouring places on it farther apart get others between them
+SAMPLES = 40  # places on a pathline at which its distance to the next one is taken
 STRETCH = 1.0001  # start on a circle just outside the screen
 
 
@@ -68,16 +69,19 @@ def capture_zone(
         raise ValueError("only a pumping well has a capture zone")
     centre = np.array([wx + flow.origin[0], wy + flow.origin[1]])
     circle = radius * STRETCH
-    marks = _marks(flow, obstacles, rate, times)
+    marks = np.unique(np.asarray(times, dtype=float))
     angles = 2.0 * np.pi * (np.arange(FIRST_PATHS) + 0.5) / FIRST_PATHS
     paths = _follow(flow, centre, circle, angles, obstacles, marks)
-    while angles.size < MOST_PATHS:
-        between = _needed(angles, paths)
-        if between.size == 0:
+    gaps: dict[tuple[float, float], float] = {}
+    while True:
+        steps = _steps(angles)
+        wide = _gaps(angles, paths, gaps) > WIDE * _size(paths)
+        apart = wide & (steps <= PARTED)
+        between = _between(angles, steps, wide & ~apart, _stretched(paths) & (steps > PARTED))
+        if between.size == 0 or angles.size > MOST_PATHS:
             break
         more = _follow(flow, centre, circle, between, obstacles, marks)
         angles, paths = _merged(angles, paths, between, more)
-    apart = _apart(angles, paths)
     whole = _polygon(paths, apart, None)
     asked = []
     for days in times:
@@ -93,20 +97,6 @@ def capture_zone(
     )
 
 
-def _marks(flow: FlowField, obstacles: Obstacles, rate: float, times: Sequence[float]) -> Floats:
-    """Times at which neighbours are compared, from the screen to long after anything moves, and the asked ones."""
-    x0, x1, y0, y1 = obstacles.box
-    full = flow.aquifer.thickness
-    wells = flow.arrays.wells
-    phi = flow.potential(wells[:, 0] + flow.origin[0], wells[:, 1] + flow.origin[1])
-    thick = min(full, float(np.max(flow.aquifer.saturated_thickness(phi))) if not np.isfinite(full) else full)
-    slow = flow.aquifer.porosity * max(thick, 0.1)
-    whole = slow * (x1 - x0) * (y1 - y0) / rate  # time in which the well empties the box
-    return np.unique(
-        np.concatenate([np.geomspace(1e-5 * whole, 100.0 * whole, N_MARKS), np.asarray(times, dtype=float)])
-    )
-
-
 def _follow(
     flow: FlowField, centre: Floats, circle: float, angles: Floats, obstacles: Obstacles, marks: Floats
 ) -> Pathlines:
@@ -119,32 +109,44 @@ def _steps(angles: Floats) -> Floats:
     return np.diff(angles, append=angles[0] + 2.0 * np.pi)
 
 
-def _gaps(paths: Pathlines) -> Floats:
-    """Largest distance (m) of each path to the next one at equal times."""
-    at = paths.at_marks
-    return np.asarray(np.hypot(*np.moveaxis(np.roll(at, -1, axis=0) - at, -1, 0)).max(axis=1))
+def _gaps(angles: Floats, paths: Pathlines, known: dict[tuple[float, float], float]) -> Floats:
+    """Largest distance (m) between each path and the next one, wherever along them; ``known`` keeps what was found."""
+    out = np.empty(angles.size)
+    for i in range(angles.size):
+        j = (i + 1) % angles.size
+        key = float(angles[i]), float(angles[j])
+        if key not in known:
+            known[key] = max(_farthest(paths.points[i], paths.points[j]), _farthest(paths.points[j], paths.points[i]))
+        out[i] = known[key]
+    return out
+
+
+def _farthest(path: Floats, other: Floats) -> float:
+    """Largest distance (m) of places evenly spread over the points of a path from another path."""
+    at = path[np.unique(np.linspace(0, len(path) - 1, SAMPLES).astype(int)), :2]
+    return float(shapely.distance(shapely.points(at), shapely.LineString(other[:, :2])).max())
 
 
 def _size(paths: Pathlines) -> float:
-    at = paths.at_marks[:, -1]
-    return float(np.hypot(np.ptp(at[:, 0]), np.ptp(at[:, 1])))
-
-
-def _limit(paths: Pathlines) -> float:
+    """Diagonal (m) of the box round all paths."""
     ends = np.array([p[:, :2].min(axis=0) for p in paths.points] + [p[:, :2].max(axis=0) for p in paths.points])
-    return SPREAD * float(np.hypot(np.ptp(ends[:, 0]), np.ptp(ends[:, 1])))
+    return float(np.hypot(np.ptp(ends[:, 0]), np.ptp(ends[:, 1])))
 
 
-def _needed(angles: Floats, paths: Pathlines) -> Floats:
-    """Angles half-way between neighbours that part and still start apart."""
-    steps = _steps(angles)
-    wide = (_gaps(paths) > _limit(paths)) & (steps > PARTED)
-    return np.asarray((angles + 0.5 * steps)[wide])
+def _stretched(paths: Pathlines) -> NDArray[np.bool_]:
+    """Paths that are far from the next one on any of the asked fronts, by the size of that front."""
+    at = paths.at_marks
+    if at.shape[1] == 0:
+        return np.zeros(len(at), dtype=bool)
+    step = np.hypot(*np.moveaxis(np.roll(at, -1, axis=0) - at, -1, 0))
+    size = np.hypot(np.ptp(at[:, :, 0], axis=0), np.ptp(at[:, :, 1], axis=0))
+    return np.asarray((step > FRONT * size).any(axis=1))
 
 
-def _apart(angles: Floats, paths: Pathlines) -> NDArray[np.bool_]:
-    """Paths with a dividing line between them and the next."""
-    return np.asarray(_gaps(paths) > _limit(paths))
+def _between(angles: Floats, steps: Floats, wide: NDArray[np.bool_], stretched: NDArray[np.bool_]) -> Floats:
+    """New angles: three between neighbours that part, so that a dividing line is closed in on quickly; else one."""
+    three = [(angles + share * steps)[wide] for share in (0.25, 0.5, 0.75)]
+    return np.concatenate([*three, (angles + 0.5 * steps)[stretched & ~wide]])
 
 
 def _merged(angles: Floats, paths: Pathlines, between: Floats, more: Pathlines) -> tuple[Floats, Pathlines]:

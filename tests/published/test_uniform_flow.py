@@ -141,9 +141,6 @@ def test_time_zone_of_a_year(zone):
     assert (y0, y1) == pytest.approx((-110.6980773, 110.6980773), rel=1e-3)
 
 
-@pytest.mark.xfail(
-    reason="the front between the first 72 pathlines is drawn by chords, which cut off 2.5e-3", strict=True
-)
 def test_area_of_the_time_zone_to_a_thousandth(zone):
     assert zone.times[0].area == pytest.approx(41477.27273, rel=1e-3)
 
