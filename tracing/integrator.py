@@ -42,6 +42,7 @@ LAND = 1e-5  # m: this near to a line a particle has arrived
 ASIDE = 1e-3  # m: where the flow on both banks is looked at, and where a particle goes on
 SLIP = 0.05  # of its length: a step may end this far behind an impermeable side, and is then set back before it
 MOST_REDO = 200
+SPENT = 1e-7  # against the flow: when recharge has given all but this share of the water, its way up is known
 MOST_CRAWL = 12  # this many steps of mm along a wall: the particle has come to a divide on it
 
 WELL, STREAM = int(Ending.WELL), int(Ending.STREAM)
@@ -281,6 +282,8 @@ def follow(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks
             slow = porosity * 0.5 * (_thickness(phi, conductivity, full) + _thickness(phi_new, conductivity, full))
             left *= np.exp(-0.5 * (infiltration + new_infiltration) * h / slow)
             infiltration = new_infiltration
+            if sign < 0.0 and left < SPENT:
+                reason = STAGNATION
         for w in range(f.wells.shape[0]):
             r2 = (x_new - f.wells[w, 0]) ** 2 + (y_new - f.wells[w, 1]) ** 2
             radius2 = f.wells[w, 3] ** 2

@@ -24,6 +24,9 @@ MOST_PATHS = 1500
 PARTED = 1e-8  # rad: neighbours that start this close and still part have a dividing line between them
 WIDE = 0.05  # of the zone's size: neighbouring pathlines farther apart get others between them
 FRONT = 0.03  # of a front's size: neighbouring places on it farther apart get others between them
+STEP_ERROR = 1e-4  # m of position a step
+CLOSE = 1e-5  # of a ring's size: vertices nearer than this to the last one are left out
+SLIVER = 1e-9  # of the area: smaller parts come from rounding
 SAMPLES = 40  # places on a pathline at which its distance to the next one is taken
 STRETCH = 1.0001  # start on a circle just outside the screen
 
@@ -101,7 +104,7 @@ def _follow(
     flow: FlowField, centre: Floats, circle: float, angles: Floats, obstacles: Obstacles, marks: Floats
 ) -> Pathlines:
     x, y = centre[0] + circle * np.cos(angles), centre[1] + circle * np.sin(angles)
-    return trace(flow, x, y, direction=-1, lines=obstacles, times=marks)
+    return trace(flow, x, y, direction=-1, lines=obstacles, times=marks, tolerance=STEP_ERROR)
 
 
 def _steps(angles: Floats) -> Floats:
@@ -197,14 +200,22 @@ def _round_divide(back: Floats, out: Floats) -> list[Floats]:
 
 
 def _valid(ring: Floats) -> shapely.Geometry:
-    polygon = shapely.Polygon(ring)
-    if not polygon.is_valid:
-        polygon = shapely.buffer(polygon, 0.0)
-    return polygon
+    """The polygon of a ring, thinned where its vertices crowd (many paths end at one divide), made valid."""
+    least = CLOSE * float(np.hypot(*np.ptp(ring, axis=0)))
+    kept = [0]
+    for k in range(1, len(ring)):
+        if np.hypot(*(ring[k] - ring[kept[-1]])) > least:
+            kept.append(k)
+    if len(kept) < 3:
+        return shapely.Polygon()
+    polygon = shapely.Polygon(ring[kept])
+    return polygon if polygon.is_valid else shapely.make_valid(polygon)
 
 
 def _clipped(polygon: shapely.Geometry, clip: shapely.Geometry | None) -> shapely.Geometry:
-    return polygon if clip is None else shapely.intersection(polygon, clip)
+    shape = polygon if clip is None else shapely.intersection(polygon, clip)
+    whole = [p for p in shapely.get_parts(shape) if isinstance(p, shapely.Polygon) and p.area > SLIVER * shape.area]
+    return whole[0] if len(whole) == 1 else shapely.MultiPolygon(whole)
 
 
 def _supply(flow: FlowField, centre: Floats, circle: float, angles: Floats, paths: Pathlines) -> dict[str, float]:
