@@ -7,8 +7,8 @@ import numpy as np
 from ..elements.field_arrays import Floats
 from ..elements.kernels_line import N_COEF
 from ..elements.outline import Outline
-from .network import WALL
-from .panels import TIP, Mesh
+from .network import BED, WALL
+from .panels import TIP, Mesh, bounded_basis
 from .setting import Places
 from .state import State, source_supply
 from .system import panel_strengths, source_strengths
@@ -82,10 +82,10 @@ def exchange_pieces(mesh: Mesh, x: Floats, pieces: int = 8) -> tuple[np.ndarray,
 
 
 def upstream_take(mesh: Mesh, line: int, distance: float) -> Floats:
-    """Row (n + 1,) whose product with x is the water (m3/d) that a line takes out up to a distance (m) from its start."""
+    """Row (n + 1,) whose product with x is the water (m3/d) that a line takes out up to ``distance`` (m) along it."""
     n = mesh.n_unknown // max(mesh.edge.size, 1)
     row = np.zeros(mesh.n_unknown + 1)
-    edges = mesh.edges
+    edges, lengths = mesh.edges, mesh.lengths()
     for p in np.flatnonzero(edges.line[mesh.edge] == line):
         e = mesh.edge[p]
         ends = [edges.s1[e] + t * (edges.s2[e] - edges.s1[e]) for t in (mesh.t1[p], mesh.t2[p])]
@@ -94,10 +94,11 @@ def upstream_take(mesh: Mesh, line: int, distance: float) -> Floats:
         edge_u = share ** (1.0 / power)
         # the upstream part lies at small u when the panel runs with the line, else at large u
         low, high = (0.0, edge_u) if ends[1] > ends[0] else (edge_u, 1.0)
-        if high <= low:
-            continue
-        for k in range(n):
-            unit = np.zeros(mesh.n_unknown + 1)
-            unit[p * n + k] = 1.0
-            row[p * n + k] = _flux_at(mesh, unit, low + (high - low) * _U)[p] @ _W * (high - low) * mesh.lengths()[p]
+        u = low + (high - low) * _U
+        if mesh.kind[p] == TIP:
+            basis = np.polynomial.legendre.legvander(u, 2 * n - 2)[:, ::2]
+        else:
+            basis = np.polynomial.legendre.legvander(2.0 * u - 1.0, N_COEF - 1)
+            basis = basis @ bounded_basis(int(mesh.kind[p])).T if mesh.condition[p] == BED else basis[:, :n]
+        row[p * n : p * n + n] = (high - low) * lengths[p] * (_W @ basis)
     return row

@@ -13,11 +13,11 @@ from dataclasses import dataclass
 
 import numpy as np
 import scipy.linalg
-import scipy.stats
+import scipy.special
 
 from ..elements.field_arrays import Floats
 from .balance import upstream_take
-from .inputs import Inputs, Parameter, Solved, response, solve_inputs, tangent, with_values
+from .inputs import Inputs, Parameter, Solved, responses, solve_inputs, tangent, with_values
 from .sensitivity import Probe, head_change, make_probe, potential_change, potentials
 from .state import NotSolvedError
 from .system import System
@@ -101,9 +101,14 @@ class FitResult:
 
     def interval(self, k: int, share: float = 0.9) -> tuple[float, float]:
         """Central interval of parameter k that holds it with the stated probability (Student's t)."""
-        reach = float(scipy.stats.t.ppf(0.5 + 0.5 * share, self.dof)) * float(np.sqrt(self.covariance[k, k]))
+        reach = _student(0.5 + 0.5 * share, self.dof) * float(np.sqrt(self.covariance[k, k]))
         ends = self.theta[k] - reach, self.theta[k] + reach
         return (float(np.exp(ends[0])), float(np.exp(ends[1]))) if self.parameters[k].log else ends
+
+
+def _student(probability: float, dof: float) -> float:
+    """Quantile of Student's t (of the normal distribution for infinite degrees of freedom)."""
+    return float(scipy.special.ndtri(probability) if np.isinf(dof) else scipy.special.stdtrit(dof, probability))
 
 
 @dataclass(frozen=True)
@@ -126,14 +131,14 @@ class _Model:
     def jacobian(self, solved: Solved, theta: Floats) -> Floats:
         out = np.zeros((self.readings.values.size, theta.size))
         n_levels = self.readings.head.size
-        for k, parameter in enumerate(self.parameters):
-            change, dx = response(solved, tangent(solved, parameter, float(theta[k])))
+        changes = [tangent(solved, p, float(t)) for p, t in zip(self.parameters, theta, strict=True)]
+        for k, (change, dx) in enumerate(responses(solved, changes)):
             d_phi = potential_change(solved.state, self.probe, change, dx)
             out[:n_levels, k] = head_change(solved.state, self.probe, change, d_phi)
             out[n_levels:, k] = self.takes @ dx
             for g, members in enumerate(self.readings.gauging_start):
                 if k in members:
-                    out[n_levels + g, k] += np.exp(theta[k]) if parameter.log else 1.0
+                    out[n_levels + g, k] += np.exp(theta[k]) if self.parameters[k].log else 1.0
         return out
 
 
@@ -169,17 +174,21 @@ def fit(
     sigma0[: readings.head.size, : readings.head.size] += ground
     theta, solved, steps = _settle(model, theta, sigma0, 1.0, solved)
     scale, dof = 1.0, np.inf
-    for _ in range(30):
+    for _ in range(MOST_STEPS):
         jacobian = model.jacobian(solved, theta)
-        covariance = _posterior(jacobian, scale**2 * sigma0, parameters)
         _, computed = model.at(theta, solved)
-        new_scale, dof = _scale(readings.values - computed, sigma0, jacobian, covariance, scale)
-        settled = abs(new_scale - scale) < 1e-4 * scale
-        scale = new_scale
+        before = theta
+        for _ in range(MOST_STEPS):  # the scale at these values: its own small fixed point
+            covariance = _posterior(jacobian, scale**2 * sigma0, parameters)
+            previous, (scale, dof) = scale, _scale(readings.values - computed, sigma0, jacobian, covariance, scale)
+            if abs(scale - previous) < 1e-6 * scale:
+                break
         theta, solved, more = _settle(model, theta, sigma0, scale, solved)
         steps += more
-        if settled:
+        if np.all(abs(theta - before) <= 1e-3 * np.sqrt(np.diag(covariance))):
             break
+    else:
+        raise NotSolvedError("the scale of the errors and the fitted values did not settle together")
     sigma = scale**2 * sigma0
     jacobian = model.jacobian(solved, theta)
     covariance = _posterior(jacobian, sigma, parameters)
@@ -189,7 +198,7 @@ def fit(
     own_theta, own_solved, _ = _settle(model, theta, own, 1.0, solved)
     own_misfit, own_dof = _own_misfit(model, own_theta, own_solved, own)
     informed = np.array([1.0 if np.isinf(p.sd) else 1.0 - covariance[k, k] / p.sd**2 for k, p in enumerate(parameters)])
-    probability = float(scipy.stats.chi2.sf(own_misfit, own_dof)) if own_dof > 0 else np.nan
+    probability = float(scipy.special.chdtrc(own_dof, own_misfit)) if own_dof > 0 else np.nan
     return FitResult(
         tuple(parameters), theta, covariance, informed, computed, residuals, standardized, leverage, scale, dof, jacobian,
         sigma, own_misfit, own_dof, probability, steps, solved,
@@ -240,7 +249,7 @@ def _settle(model: _Model, theta: Floats, sigma0: Floats, scale: float, solved: 
             _posterior(jacobian, np.eye(r.size), model.parameters)
             raise
         promised = float(gradient @ move)  # fall of the objective that the linear model promises
-        if promised < 1e-10 * (1.0 + value):
+        if promised < 1e-8 * (1.0 + value):
             return theta, solved, step
         share = 1.0
         while True:

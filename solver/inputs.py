@@ -7,7 +7,7 @@ from typing import Literal
 import numpy as np
 
 from ..elements.field_arrays import Floats
-from .sensitivity import Probe, make_probe, potential_change, potentials, unknown_change
+from .sensitivity import Probe, make_probe, potential_change, potentials, unknown_changes
 from .setting import Setting
 from .state import NotSolvedError, State, solve_state
 from .system import System
@@ -226,26 +226,30 @@ def _zero(setting: Setting) -> Setting:
     )
 
 
-def response(solved: Solved, change: Setting) -> tuple[Setting, Floats]:
-    """The whole change of the setting and of the unknowns, once the thickness at the gradient's place has followed.
+def responses(solved: Solved, changes: Sequence[Setting]) -> list[tuple[Setting, Floats]]:
+    """Each change of the setting with that of the unknowns, once the thickness at the gradient's place has followed.
 
     q = K g b(Phi_at): dq = explicit + K g (db/dPhi dPhi_at + explicit db), with dPhi_at linear in dq.
     """
-    state = solved.state
-    dx = unknown_change(state, change)
-    if solved.probe is None:
-        return change, dx
+    if not changes:
+        return []
+    state, probe = solved.state, solved.probe
+    if probe is None:
+        return list(zip(changes, unknown_changes(state, changes).T, strict=True))
+    unit = replace(_zero(state.setting), flow=solved.along)
+    *moves, unit_dx = unknown_changes(state, [*changes, unit]).T
     aquifer = state.setting.aquifer
-    phi = potentials(state, solved.probe)
+    phi = potentials(state, probe)
     thick = float(aquifer.saturated_thickness(phi)[0])
     strength = float(state.setting.flow @ solved.along) / thick  # K g
     confined = np.isfinite(aquifer.thickness) and thick >= aquifer.thickness
     slope = 0.0 if confined else 1.0 / (aquifer.conductivity * thick)
-    d = change.aquifer
-    explicit = ((d.top or 0.0) - d.base) if confined else -0.5 * thick * d.conductivity / aquifer.conductivity
-    d_phi = float(potential_change(state, solved.probe, change, dx)[0])
-    unit = replace(_zero(state.setting), flow=solved.along)
-    unit_dx = unknown_change(state, unit)
-    per_flow = float(potential_change(state, solved.probe, unit, unit_dx)[0])
-    extra = strength * (slope * d_phi + explicit) / (1.0 - strength * slope * per_flow)
-    return replace(change, flow=change.flow + extra * solved.along), dx + extra * unit_dx
+    per_flow = float(potential_change(state, probe, unit, unit_dx)[0])
+    out = []
+    for change, dx in zip(changes, moves, strict=True):
+        d = change.aquifer
+        explicit = ((d.top or 0.0) - d.base) if confined else -0.5 * thick * d.conductivity / aquifer.conductivity
+        d_phi = float(potential_change(state, probe, change, dx)[0])
+        extra = strength * (slope * d_phi + explicit) / (1.0 - strength * slope * per_flow)
+        out.append((replace(change, flow=change.flow + extra * solved.along), dx + extra * unit_dx))
+    return out

@@ -6,6 +6,7 @@ anything is solved. Where a stream ends on a shore or on another stream, the poi
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 import shapely
@@ -136,7 +137,7 @@ def _split_at_crossings(rows: list[list], lines: Sequence[Line], origin: tuple[f
     out = []
     for row, places in zip(rows, cuts, strict=True):
         marks = [0.0, *sorted(places), 1.0]
-        for a, b in zip(marks[:-1], marks[1:], strict=True):
+        for a, b in pairwise(marks):
             at = [lo + (hi - lo) * t for t in (a, b) for lo, hi in ((row[0], row[1]), (row[2], row[3]), row[5:7])]
             out.append([at[0], at[3], at[1], at[4], row[4], at[2], at[5], row[7]])
     return out

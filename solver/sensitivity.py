@@ -5,6 +5,7 @@ unknowns by dx = -A^+ (dr/dp) with the tangent A of the state (implicit differen
 solution; exact to the misfit, which is small).
 """
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -41,18 +42,27 @@ def potentials(state: State, probe: Probe) -> Floats:
     return probe.basis @ state.x + probe.sources @ source_strengths(state.setting)
 
 
-def unknown_change(state: State, change: Setting) -> Floats:
-    """Dx (n + 1,) for a change of the setting; ``change`` holds differences in every field but ``aquifer``,
-    whose conductivity, base and top are differences too (see ``difference``).
-    """
+def unknown_changes(state: State, changes: Sequence[Setting]) -> Floats:
+    """Changes (n + 1, k) of the unknowns for k changes of the setting, differences in every field (aquifer too)."""
+    rows = np.stack([_row_change(state, change) for change in changes], axis=1)
+    conditions = np.stack([_condition_change(state, change) for change in changes], axis=1)
+    return state.response(rows, conditions)
+
+
+def _aquifer_part(change: Setting) -> tuple[float, float, float]:
+    d = change.aquifer
+    return d.conductivity, d.base, d.top if d.top is not None else 0.0
+
+
+def _row_change(state: State, change: Setting) -> Floats:
+    """Change of the row residuals (m,) in metres of head, the unknowns held."""
     system, setting = state.system, state.setting
-    aquifer, d_aquifer = setting.aquifer, change.aquifer
+    aquifer = setting.aquifer
     condition = system.mesh.condition[system.rows.panel]
     stage = row_stages(system, setting)
     d_stage = system.rows.shift_share @ change.shifts
     d_given = system.sources @ source_strengths(change)
-    d_top = d_aquifer.top if d_aquifer.top is not None else 0.0
-    aquifer_part = (d_aquifer.conductivity, d_aquifer.base, d_top)
+    aquifer_part = _aquifer_part(change)
     rows = d_given * state.weight
     head = condition == HEAD
     thick = aquifer.saturated_thickness(aquifer.potential(stage))
@@ -72,10 +82,11 @@ def unknown_change(state: State, change: Setting) -> Floats:
         rows[bed] -= state.weight[bed] * aquifer.potential_change(heads, *aquifer_part)
         rows[bed] -= d_stage[bed] * wet
         rows[bed] += (system.density[bed] @ state.x) / conductance**2 * change.conductances[line][bed]
-    return state.response(rows, _condition_change(state, change, aquifer_part))
+    return rows
 
 
-def _condition_change(state: State, change: Setting, aquifer_part: tuple[float, float, float]) -> Floats:
+def _condition_change(state: State, change: Setting) -> Floats:
+    """Change of the right sides of the side conditions."""
     system, setting = state.system, state.setting
     places = system.places
     out = np.zeros(len(system.circulation) + 1)
@@ -87,7 +98,7 @@ def _condition_change(state: State, change: Setting, aquifer_part: tuple[float, 
         head = setting.reference_head
         aquifer = setting.aquifer
         slope = aquifer.conductivity * float(aquifer.saturated_thickness(aquifer.potential(head)))
-        moved = slope * change.reference_head + float(aquifer.potential_change(head, *aquifer_part))
+        moved = slope * change.reference_head + float(aquifer.potential_change(head, *_aquifer_part(change)))
         out[-1] = moved - float(source_potentials(places, system.mesh, x, y)[0] @ given)
     return out
 

@@ -10,7 +10,7 @@ Coefficients: Dormand & Prince (1980); dense output of order 4: Shampine (1986).
 import numpy as np
 
 from ..elements.jit import kernel, parallel_kernel, prange
-from ..elements.kernels_field import discharge_at, potential_at, recharge_at
+from ..elements.kernels_field import discharge_at, recharge_at
 from ..elements.kernels_line import N_WORK
 from .endings import Ending
 from .obstacles import WALL
@@ -103,8 +103,8 @@ def before_wall(x0, y0, x1, y1, segment):
 
 
 @kernel
-def follow(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks, points, share, work):
-    """Follow one particle from x, y (local m), sign +1 with the flow, -1 against it.
+def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks, points, share, work):
+    """Follow one particle from x, y (local m) where the potential is phi (m3/d), sign +1 with the flow, -1 against it.
 
     medium: conductivity, full thickness, porosity. marks (k,): ascending times (d) whose positions go into
     at_marks (k, 2); points (m, 3): x, y, t of the start and of every step; share (l + 1,): of the water that
@@ -114,7 +114,6 @@ def follow(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks
     conductivity, full, porosity = medium[0], medium[1], medium[2]
     rate = np.empty((7, 3))
     t = 0.0
-    phi = potential_at(x, y, f, work)
     n_points = 1
     points[0, 0] = x
     points[0, 1] = y
@@ -126,6 +125,7 @@ def follow(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks
     h = 0.0
     x_new = x
     y_new = y
+    phi_new = phi
     reason = 0
     named = -1
     redo = 0
@@ -205,8 +205,7 @@ def follow(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks
                     if crawl > MOST_CRAWL:
                         reason = STAGNATION
                         break
-                    x, y, t = x_set, y_set, t + h
-                    phi = potential_at(x, y, f, work)
+                    x, y, t, phi = x_set, y_set, t + h, phi_new
                     points[n_points, 0] = x
                     points[n_points, 1] = y
                     points[n_points, 2] = t
@@ -238,10 +237,15 @@ def follow(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks
             line = obstacles.line[segment]
             px = x + crossing * (x_new - x)
             py = y + crossing * (y_new - y)
-            near_x, near_y = discharge_at(px - ASIDE * nx, py - ASIDE * ny, f, work)
-            far_x, far_y = discharge_at(px + ASIDE * nx, py + ASIDE * ny, f, work)
-            arriving = sign * (near_x * nx + near_y * ny)
-            leaving = sign * (far_x * nx + far_y * ny)
+            arriving = 0.0
+            leaving = 0.0
+            for side in range(2):  # one call in the code: it is what takes long to compile
+                away = (2 * side - 1) * ASIDE
+                bank_x, bank_y = discharge_at(px + away * nx, py + away * ny, f, work)
+                if side == 0:
+                    arriving = sign * (bank_x * nx + bank_y * ny)
+                else:
+                    leaving = sign * (bank_x * nx + bank_y * ny)
             if obstacles.ending[segment] != STREAM or leaving <= 0.0 or arriving <= 0.0:
                 reason = obstacles.ending[segment]
                 named = line
@@ -258,7 +262,7 @@ def follow(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks
                 left *= leaving / arriving
             x = px + ASIDE * nx
             y = py + ASIDE * ny
-            phi = potential_at(x, y, f, work)
+            phi = phi_new
             points[n_points, 0] = x
             points[n_points, 1] = y
             points[n_points, 2] = t
@@ -341,10 +345,24 @@ def follow(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks
 
 
 @parallel_kernel
-def follow_all(x, y, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks, points, share, result):
+def follow_all(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks, points, share, result):
     """Follow particles x, y (n,); outputs as in ``follow`` with a first axis n; result (n, 4) its return values."""
     for i in prange(x.size):
         work = np.empty((2, N_WORK), np.complex128)
         result[i, 0], result[i, 1], result[i, 2], result[i, 3] = follow(
-            x[i], y[i], sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks[i], points[i], share[i], work
+            x[i],
+            y[i],
+            phi[i],
+            sign,
+            f,
+            medium,
+            obstacles,
+            t_max,
+            tol,
+            q_rest,
+            marks,
+            at_marks[i],
+            points[i],
+            share[i],
+            work,
         )

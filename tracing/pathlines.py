@@ -79,6 +79,7 @@ def trace(
         raise ValueError(f"direction must be 1 or -1; instead received {direction}")
     local_x = np.ascontiguousarray(np.atleast_1d(np.asarray(x, dtype=float)) - flow.origin[0])
     local_y = np.ascontiguousarray(np.atleast_1d(np.asarray(y, dtype=float)) - flow.origin[1])
+    phi = np.ascontiguousarray(flow.potential(local_x + flow.origin[0], local_y + flow.origin[1]))
     marks = np.ascontiguousarray(np.atleast_1d(np.asarray(times, dtype=float)))
     arrays = obstacles.arrays(flow.origin)
     aquifer = flow.aquifer
@@ -93,7 +94,7 @@ def trace(
         part = slice(start, min(start + CHUNK, n))
         size = part.stop - start
         follow_all(
-            local_x[part], local_y[part], float(direction), flow.arrays, medium, arrays, float(t_max), float(tolerance),
+            local_x[part], local_y[part], phi[part], float(direction), flow.arrays, medium, arrays, float(t_max), float(tolerance),
             q_rest, marks, at_marks[part], buffer[:size], share[part], result[part],
         )  # fmt: skip
         for i in range(size):
