@@ -14,7 +14,7 @@ from .map_content import LevelMark, MapContent, WellMark
 from .maps import STYLE, draw_map
 from .summary import residual_rows
 
-DPI = 200
+DPI = 160
 
 
 @dataclass(frozen=True)

@@ -25,14 +25,14 @@ PALE = LinearSegmentedColormap.from_list("pale", ["#f6f1e3", "#e3ecdf", "#c4dce0
 WATER, DEEP, LOSS, INK = "#d6e6f2", "#1b4f7a", "#a0522d", "#222222"
 TIMES = [(0, (5, 2)), (0, (5, 1.5, 1, 1.5)), (0, (1.2, 1.4)), (0, (8, 2, 1, 1, 1, 2))]
 LANDSCAPE, PORTRAIT = (11.69, 8.27), (8.27, 11.69)  # A4, inches
-TOP, BOTTOM, SIDE = 0.62, 1.95, 0.72  # inches round the map
+TOP, BOTTOM, SIDE = 0.62, 2.25, 0.72  # inches round the map
 
 
 def draw_map(content: MapContent) -> Figure:
     """The map of some content as a figure; nothing global is touched."""
     with mpl.rc_context(STYLE):
-        x0, x1, y0, y1 = content.box
-        page = LANDSCAPE if (x1 - x0) > 1.05 * (y1 - y0) else PORTRAIT
+        page = max((LANDSCAPE, PORTRAIT), key=lambda p: _inches_per_m(content.box, p))
+        page = _trimmed(content.box, page)
         figure = Figure(figsize=page, dpi=200)
         canvas = FigureCanvasAgg(figure)
         axes = _frame(figure, content.box, page)
@@ -49,11 +49,23 @@ def draw_map(content: MapContent) -> Figure:
     return figure
 
 
+def _inches_per_m(box: tuple[float, float, float, float], page: tuple[float, float]) -> float:
+    """The largest scale at which the box fits into what the margins of a page leave."""
+    x0, x1, y0, y1 = box
+    return min((page[0] - 2 * SIDE) / (x1 - x0), (page[1] - TOP - BOTTOM) / (y1 - y0))
+
+
+def _trimmed(box: tuple[float, float, float, float], page: tuple[float, float]) -> tuple[float, float]:
+    """The page without what would stay empty, never narrower than an upright A4 (the legend's width)."""
+    inches = _inches_per_m(box, page)
+    width = max(inches * (box[1] - box[0]) + 2 * SIDE, PORTRAIT[0])
+    return min(width, page[0]), min(inches * (box[3] - box[2]) + TOP + BOTTOM, page[1])
+
+
 def _frame(figure: Figure, box: tuple[float, float, float, float], page: tuple[float, float]) -> Axes:
     """Axes of equal scale that fill what the margins leave, centred across."""
     x0, x1, y0, y1 = box
-    room = page[0] - 2 * SIDE, page[1] - TOP - BOTTOM
-    inches = min(room[0] / (x1 - x0), room[1] / (y1 - y0))
+    inches = _inches_per_m(box, page)
     width, height = inches * (x1 - x0), inches * (y1 - y0)
     left = 0.5 * (page[0] - width)
     bottom = page[1] - TOP - height
@@ -250,7 +262,7 @@ def _margin(figure: Figure, axes: Axes, content: MapContent, handles: list[Any],
     figure.text(frame.x0, 1 - 0.26 / page[1], content.title, fontsize=12, fontweight="bold", va="top")
     figure.text(frame.x0, 1 - 0.46 / page[1], content.case, fontsize=8, va="top", color="#444444")
     below = frame.y0 - 0.36 / page[1]
-    columns = 3 if page == LANDSCAPE else 2
+    columns = 3 if page[0] > 10.0 else 2
     figure.legend(
         handles=handles, loc="upper left", bbox_to_anchor=(frame.x0 - 0.008, below), ncols=columns, frameon=False, fontsize=6.6,
         handlelength=2.6, columnspacing=1.4, labelspacing=0.45, borderaxespad=0.0,

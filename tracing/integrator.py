@@ -42,6 +42,8 @@ LAND = 1e-5  # m: this near to a line a particle has arrived
 ASIDE = 1e-3  # m: where the flow on both banks is looked at, and where a particle goes on
 SLIP = 0.05  # of its length: a step may end this far behind an impermeable side, and is then set back before it
 MOST_REDO = 200
+SUB = 6  # a long step is stored in this many pieces
+LONG = 5e-4  # of the box: steps longer than this are
 SPENT = 1e-7  # against the flow: when recharge has given all but this share of the water, its way up is known
 MOST_CRAWL = 12  # this many steps of mm along a wall: the particle has come to a divide on it
 
@@ -88,6 +90,18 @@ def first_crossing(x0, y0, x1, y1, segment):
 
 
 @kernel
+def within_step(s, h, rate):
+    """Move (m) from the start of a step to its share s, by the dense output."""
+    mx = 0.0
+    my = 0.0
+    for j in range(7):
+        b = s * (P[j, 0] + s * (P[j, 1] + s * (P[j, 2] + s * P[j, 3])))
+        mx += b * rate[j, 0]
+        my += b * rate[j, 1]
+    return h * mx, h * my
+
+
+@kernel
 def before_wall(x0, y0, x1, y1, segment):
     """The place next to a wall, on the side of point 0, where point 1 behind it is set back to; how far it was."""
     ux = segment[2] - segment[0]
@@ -107,7 +121,7 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
     """Follow one particle from x, y (local m) where the potential is phi (m3/d), sign +1 with the flow, -1 against it.
 
     medium: conductivity, full thickness, porosity. marks (k,): ascending times (d) whose positions go into
-    at_marks (k, 2); points (m, 3): x, y, t of the start and of every step; share (l + 1,): of the water that
+    at_marks (k, 2); points (m, 3): x, y, t of the start and of every step, and in between on long ones; share (l + 1,): of the water that
     arrives at the start, what each line gave (the last one: what is still on the way at the end), followed against
     the flow only. Returns the number of points, the ending, the well or line it names (-1 none), and steps tried.
     """
@@ -136,7 +150,7 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
     infiltration = recharge_at(x, y, f) if recharged else 0.0
     while reason == 0:
         n_tried += 1
-        if n_points == points.shape[0] or redo > MOST_REDO:
+        if n_points >= points.shape[0] - 1 or redo > MOST_REDO:
             reason = STEPS
             break
         bad = 0
@@ -271,15 +285,9 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
             continue
         t_new = t + h
         while next_mark < marks.size and marks[next_mark] <= t_new:
-            s = (marks[next_mark] - t) / h
-            mx = 0.0
-            my = 0.0
-            for j in range(7):
-                b = s * (P[j, 0] + s * (P[j, 1] + s * (P[j, 2] + s * P[j, 3])))
-                mx += b * rate[j, 0]
-                my += b * rate[j, 1]
-            at_marks[next_mark, 0] = x + h * mx
-            at_marks[next_mark, 1] = y + h * my
+            mx, my = within_step((marks[next_mark] - t) / h, h, rate)
+            at_marks[next_mark, 0] = x + mx
+            at_marks[next_mark, 1] = y + my
             next_mark += 1
         if recharged:
             new_infiltration = recharge_at(x_new, y_new, f)
@@ -317,6 +325,17 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
             crawl = crawl + 1 if np.sqrt((x_new - x) ** 2 + (y_new - y) ** 2) < 5.0 * ASIDE else 0
             if crawl > MOST_CRAWL and reason == 0:
                 reason = STAGNATION
+        if (
+            reason == 0
+            and n_points + SUB < points.shape[0]
+            and (x_new - x) ** 2 + (y_new - y) ** 2 > (LONG * size) ** 2
+        ):
+            for k in range(1, SUB):  # so that the chords of a long step follow its curve
+                mx, my = within_step(k / SUB, h, rate)
+                points[n_points, 0] = x + mx
+                points[n_points, 1] = y + my
+                points[n_points, 2] = t + h * k / SUB
+                n_points += 1
         x, y, t, phi = x_new, y_new, t_new, phi_new
         points[n_points, 0] = x
         points[n_points, 1] = y

@@ -12,8 +12,8 @@ from .integrator import follow_all
 from .obstacles import Line, Obstacles, make_obstacles
 
 TOLERANCE = 1e-5  # m of position a step; a relative one would mean nothing on map coordinates
-MOST_POINTS = 3000
-CHUNK = 256
+MOST_POINTS = 6000
+CHUNK = 192
 REST = 1e-7  # of the typical discharge: slower water has come to rest
 
 Floats = NDArray[np.float64]

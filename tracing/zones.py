@@ -22,7 +22,7 @@ Floats = NDArray[np.float64]
 FIRST_PATHS = 144
 MOST_PATHS = 1500
 PARTED = 1e-8  # rad: neighbours that start this close and still part have a dividing line between them
-WIDE = 0.05  # of the zone's size: neighbouring pathlines farther apart get others between them
+WIDE = 0.05  # of the zone's width: neighbouring pathlines farther apart get others between them
 FRONT = 0.03  # of a front's size: neighbouring places on it farther apart get others between them
 STEP_ERROR = 1e-4  # m of position a step
 CLOSE = 1e-5  # of a ring's size: vertices nearer than this to the last one are left out
@@ -131,9 +131,10 @@ def _farthest(path: Floats, other: Floats) -> float:
 
 
 def _size(paths: Pathlines) -> float:
-    """Diagonal (m) of the box round all paths."""
-    ends = np.array([p[:, :2].min(axis=0) for p in paths.points] + [p[:, :2].max(axis=0) for p in paths.points])
-    return float(np.hypot(np.ptp(ends[:, 0]), np.ptp(ends[:, 1])))
+    """Width (m) of the ground that the paths cover: the area of their hull over its length."""
+    hull = shapely.convex_hull(shapely.multipoints(np.concatenate([p[:, :2] for p in paths.points])))
+    x0, y0, x1, y1 = shapely.bounds(hull)
+    return float(hull.area / max(np.hypot(x1 - x0, y1 - y0), 1e-9))
 
 
 def _stretched(paths: Pathlines) -> NDArray[np.bool_]:
