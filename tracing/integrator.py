@@ -40,6 +40,7 @@ P = np.array(
 )
 LAND = 1e-5  # m: this near to a line a particle has arrived
 ASIDE = 1e-3  # m: where the flow on both banks is looked at, and where a particle goes on
+SHORT = 0.1  # m: a step below this is straight, and is held to its tangent where that meets a line
 SLIP = 0.05  # of its length: a step may end this far behind an impermeable side, and is then set back before it
 MOST_REDO = 200
 SUB = 6  # a long step is stored in this many pieces
@@ -87,6 +88,12 @@ def first_crossing(x0, y0, x1, y1, segment):
             best = s
             which = k
     return best, which
+
+
+@kernel
+def outside(x, y, box):
+    """Whether a place is off the box x0, x1, y0, y1."""
+    return x < box[0] or x > box[1] or y < box[2] or y > box[3]
 
 
 @kernel
@@ -206,6 +213,15 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
             h *= min(grow, 0.9)
             continue
         crossing, segment = first_crossing(x, y, x_new, y_new, obstacles.segment)
+        if segment < 0 and h * speed < SHORT:
+            # where both banks send water to the line, trial stages behind it can throw a short step back before it
+            x_ahead = x + h * rate[0, 0]
+            y_ahead = y + h * rate[0, 1]
+            crossing, segment = first_crossing(x, y, x_ahead, y_ahead, obstacles.segment)
+            if segment >= 0 and obstacles.ending[segment] == WALL:
+                segment = -1
+            elif segment >= 0:
+                x_new, y_new = x_ahead, y_ahead
         if segment >= 0:
             chord = np.sqrt((x_new - x) ** 2 + (y_new - y) ** 2)
             wall = obstacles.ending[segment] == WALL
@@ -234,17 +250,19 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
                     if t >= t_max:
                         reason = TIME
                     continue
-            if wall or crossing * chord > LAND:
-                h *= 0.5 if wall else max(crossing * (1.0 - 1e-3) - 0.3 * LAND / chord, 0.05)
-                redo += 1
-                continue
-            # arrived: what does the water do on the other bank?
-            redo = 0
             ux = obstacles.segment[segment, 2] - obstacles.segment[segment, 0]
             uy = obstacles.segment[segment, 3] - obstacles.segment[segment, 1]
             length = np.sqrt(ux * ux + uy * uy)
             nx = -uy / length
             ny = ux / length
+            apart = abs((x - obstacles.segment[segment, 0]) * nx + (y - obstacles.segment[segment, 1]) * ny)
+            # the distance to the line counts, not that along the path: some come in almost along the bank
+            if wall or (apart > LAND and crossing * chord > LAND):
+                h *= 0.5 if wall else max(crossing * (1.0 - 1e-3) - 0.3 * LAND / chord, 0.05)
+                redo += 1
+                continue
+            # arrived: what does the water do on the other bank?
+            redo = 0
             if nx * (x_new - x) + ny * (y_new - y) < 0.0:
                 nx = -nx
                 ny = -ny
@@ -307,19 +325,20 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
                 t_new = t + s * h
                 reason = WELL
                 named = w
-        if x_new < box[0] or x_new > box[1] or y_new < box[2] or y_new > box[3]:
-            s = 1.0
-            if x_new < box[0]:
-                s = min(s, (box[0] - x) / (x_new - x))
-            if x_new > box[1]:
-                s = min(s, (box[1] - x) / (x_new - x))
-            if y_new < box[2]:
-                s = min(s, (box[2] - y) / (y_new - y))
-            if y_new > box[3]:
-                s = min(s, (box[3] - y) / (y_new - y))
-            x_new = x + s * (x_new - x)
-            y_new = y + s * (y_new - y)
-            t_new = t + s * h
+        if outside(x_new, y_new, box):
+            # the share of the step at which it leaves, by bisection of the dense output
+            low = 0.0
+            high = 1.0
+            for _ in range(45):
+                s = 0.5 * (low + high)
+                mx, my = within_step(s, h, rate)
+                if outside(x + mx, y + my, box):
+                    high = s
+                else:
+                    low = s
+            x_new = x + mx
+            y_new = y + my
+            t_new = t + high * h
             reason = DRAWN_AREA
         if crawl >= 0:
             crawl = crawl + 1 if np.sqrt((x_new - x) ** 2 + (y_new - y) ** 2) < 5.0 * ASIDE else 0

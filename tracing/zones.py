@@ -26,6 +26,7 @@ WIDE = 0.05  # of the zone's width: neighbouring pathlines farther apart get oth
 FRONT = 0.03  # of a front's size: neighbouring places on it farther apart get others between them
 STEP_ERROR = 1e-4  # m of position a step
 CLOSE = 1e-5  # of a ring's size: vertices nearer than this to the last one are left out
+CUT = 1e-6  # of the area: more than this outside the clip makes a zone open
 SLIVER = 1e-9  # of the area: smaller parts come from rounding
 SAMPLES = 40  # places on a pathline at which its distance to the next one is taken
 STRETCH = 1.0001  # start on a circle just outside the screen
@@ -93,7 +94,7 @@ def capture_zone(
         asked.append(TimeZone(float(days), ground, float(ground.area)))
     leaves = bool(np.any(paths.endings == Ending.DRAWN_AREA))
     clipped = _clipped(whole, clip)
-    is_open = leaves or clipped.area < whole.area * (1 - 1e-9)
+    is_open = leaves or clipped.area < whole.area * (1.0 - CUT)
     supply = _supply(flow, centre, circle, angles, paths)
     return CaptureZone(
         clipped, float(clipped.area), is_open, supply, tuple(asked), paths.counts(), int(apart.sum()), paths
