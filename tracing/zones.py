@@ -23,11 +23,12 @@ FIRST_PATHS = 144
 MOST_PATHS = 1500
 PARTED = 1e-8  # rad: neighbours that start this close and still part have a dividing line between them
 WIDE = 0.05  # of the zone's width: neighbouring pathlines farther apart get others between them
+TOGETHER = 1e-4  # of the zone's width: neighbours that stay this close run along the same line
 FRONT = 0.03  # of a front's size: neighbouring places on it farther apart get others between them
 STEP_ERROR = 1e-4  # m of position a step
-CLOSE = 1e-5  # of a ring's size: vertices nearer than this to the last one are left out
+CLOSE = 1e-5  # of a ring's size: vertices that move its line by less are left out
 CUT = 1e-6  # of the area: more than this outside the clip makes a zone open
-SLIVER = 1e-9  # of the area: smaller parts come from rounding
+SLIVER = 1e-6  # of the area: smaller parts and holes come from rounding
 SAMPLES = 40  # places on a pathline at which its distance to the next one is taken
 STRETCH = 1.0001  # start on a circle just outside the screen
 
@@ -76,21 +77,25 @@ def capture_zone(
     marks = np.unique(np.asarray(times, dtype=float))
     angles = 2.0 * np.pi * (np.arange(FIRST_PATHS) + 0.5) / FIRST_PATHS
     paths = _follow(flow, centre, circle, angles, obstacles, marks)
-    gaps: dict[tuple[float, float], float] = {}
+    gaps: dict[tuple[float, float], tuple[float, float]] = {}
     while True:
         steps = _steps(angles)
-        wide = _gaps(angles, paths, gaps) > WIDE * _size(paths)
-        apart = wide & (steps <= PARTED)
-        between = _between(angles, steps, wide & ~apart, _stretched(paths) & (steps > PARTED))
+        near, far = _gaps(angles, paths, gaps)
+        size = _size(paths)
+        wide = far > WIDE * size
+        # one of two paths along the same divide may be spent before the other: they do not part
+        spent = wide & (near <= TOGETHER * size) & _first_is_spent(paths)
+        apart = wide & ~spent & (steps <= PARTED)
+        between = _between(angles, steps, wide & ~spent & ~apart, _stretched(paths) & (steps > PARTED))
         if between.size == 0 or angles.size > MOST_PATHS:
             break
         more = _follow(flow, centre, circle, between, obstacles, marks)
         angles, paths = _merged(angles, paths, between, more)
-    whole = _polygon(paths, apart, None)
+    whole = _polygon(paths, apart, spent, None)
     asked = []
     for days in times:
         k = int(np.flatnonzero(marks == days)[0])
-        ground = _clipped(_polygon(paths, apart, k), clip)
+        ground = _clipped(_polygon(paths, apart, spent, k), clip)
         asked.append(TimeZone(float(days), ground, float(ground.area)))
     leaves = bool(np.any(paths.endings == Ending.DRAWN_AREA))
     clipped = _clipped(whole, clip)
@@ -113,16 +118,22 @@ def _steps(angles: Floats) -> Floats:
     return np.diff(angles, append=angles[0] + 2.0 * np.pi)
 
 
-def _gaps(angles: Floats, paths: Pathlines, known: dict[tuple[float, float], float]) -> Floats:
-    """Largest distance (m) between each path and the next one, wherever along them; ``known`` keeps what was found."""
-    out = np.empty(angles.size)
+def _gaps(
+    angles: Floats, paths: Pathlines, known: dict[tuple[float, float], tuple[float, float]]
+) -> tuple[Floats, Floats]:
+    """How far (m) each path and the next one come apart, wherever along them; ``known`` keeps what was found.
+
+    The distance of the shorter one's places from the longer one, and the larger of this and its reverse.
+    """
+    near, far = np.empty(angles.size), np.empty(angles.size)
     for i in range(angles.size):
         j = (i + 1) % angles.size
         key = float(angles[i]), float(angles[j])
         if key not in known:
-            known[key] = max(_farthest(paths.points[i], paths.points[j]), _farthest(paths.points[j], paths.points[i]))
-        out[i] = known[key]
-    return out
+            one, other = _farthest(paths.points[i], paths.points[j]), _farthest(paths.points[j], paths.points[i])
+            known[key] = min(one, other), max(one, other)
+        near[i], far[i] = known[key]
+    return near, far
 
 
 def _farthest(path: Floats, other: Floats) -> float:
@@ -131,9 +142,16 @@ def _farthest(path: Floats, other: Floats) -> float:
     return float(shapely.distance(shapely.points(at), shapely.LineString(other[:, :2])).max())
 
 
+def _first_is_spent(paths: Pathlines) -> NDArray[np.bool_]:
+    """Whether, of each path and the next, the one that is followed for less time came to rest."""
+    lasted = np.array([p[-1, 2] for p in paths.points])
+    rests = paths.endings == Ending.STAGNATION
+    return np.asarray(np.where(lasted <= np.roll(lasted, -1), rests, np.roll(rests, -1)))
+
+
 def _size(paths: Pathlines) -> float:
     """Width (m) of the ground that the paths cover: the area of their hull over its length."""
-    hull = shapely.convex_hull(shapely.multipoints(np.concatenate([p[:, :2] for p in paths.points])))
+    hull = shapely.convex_hull(shapely.LineString(np.concatenate([p[:, :2] for p in paths.points])))
     x0, y0, x1, y1 = shapely.bounds(hull)
     return float(hull.area / max(np.hypot(x1 - x0, y1 - y0), 1e-9))
 
@@ -168,7 +186,9 @@ def _merged(angles: Floats, paths: Pathlines, between: Floats, more: Pathlines) 
     return every[order], merged
 
 
-def _polygon(paths: Pathlines, apart: NDArray[np.bool_], mark: int | None) -> shapely.Geometry:
+def _polygon(
+    paths: Pathlines, apart: NDArray[np.bool_], spent: NDArray[np.bool_], mark: int | None
+) -> shapely.Geometry:
     """Ground swept up to the time of a mark, or in all (None)."""
     ring: list[Floats] = []
     n = len(paths.points)
@@ -176,9 +196,9 @@ def _polygon(paths: Pathlines, apart: NDArray[np.bool_], mark: int | None) -> sh
     for i in range(n):
         j = (i + 1) % n
         ring.append(_end(paths, i, mark)[None, :])
-        if apart[i]:
+        if apart[i] or spent[i]:
             out, back = _swept(paths, j, mark, limit), _swept(paths, i, mark, limit)
-            ring += _round_divide(back, out)
+            ring += _round_divide(back, out) if apart[i] else _between_ends(back, out)
     return _valid(np.concatenate(ring))
 
 
@@ -201,22 +221,34 @@ def _round_divide(back: Floats, out: Floats) -> list[Floats]:
     return [back[first_back:][::-1], back[max(first_back - 1, 0)][None, :], out[first_out:]]
 
 
+def _between_ends(back: Floats, out: Floats) -> list[Floats]:
+    """From the end of one path to that of another that runs along it, on the longer one."""
+    to_out = np.hypot(*(back[-1] - out).T)
+    to_back = np.hypot(*(out[-1] - back).T)
+    if to_out.min() <= to_back.min():
+        return [out[int(np.argmin(to_out)) :]]
+    return [back[int(np.argmin(to_back)) :][::-1]]
+
+
 def _valid(ring: Floats) -> shapely.Geometry:
-    """The polygon of a ring, thinned where its vertices crowd (many paths end at one divide), made valid."""
+    """The polygon of a ring, without the vertices that its curve does not need, made valid."""
     least = CLOSE * float(np.hypot(*np.ptp(ring, axis=0)))
-    kept = [0]
-    for k in range(1, len(ring)):
-        if np.hypot(*(ring[k] - ring[kept[-1]])) > least:
-            kept.append(k)
-    if len(kept) < 3:
+    thin = shapely.get_coordinates(shapely.LineString(ring).simplify(least, preserve_topology=False))
+    if len(thin) < 4:
         return shapely.Polygon()
-    polygon = shapely.Polygon(ring[kept])
+    polygon = shapely.Polygon(thin)
     return polygon if polygon.is_valid else shapely.make_valid(polygon)
 
 
 def _clipped(polygon: shapely.Geometry, clip: shapely.Geometry | None) -> shapely.Geometry:
+    """The part inside the clip, without the slivers and pinholes that rounding leaves along dividing lines."""
     shape = polygon if clip is None else shapely.intersection(polygon, clip)
-    whole = [p for p in shapely.get_parts(shape) if isinstance(p, shapely.Polygon) and p.area > SLIVER * shape.area]
+    least = SLIVER * shape.area
+    whole = [
+        shapely.Polygon(p.exterior, [r for r in p.interiors if shapely.Polygon(r).area > least])
+        for p in shapely.get_parts(shape)
+        if isinstance(p, shapely.Polygon) and p.area > least
+    ]
     return whole[0] if len(whole) == 1 else shapely.MultiPolygon(whole)
 
 
