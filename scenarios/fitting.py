@@ -52,10 +52,9 @@ def fit_scenario(scenario: Scenario, model: Model, progress: Progress = lambda _
             ground = uneven.spread.value**2 * unit
         progress(f"fitting {len(model.parameters)} numbers to {readings.values.size} readings, turn {turn + 1}")
         result = fit(solved.state.system, inputs, model.parameters, readings, ground, start=start)
-        start = result.theta
-        fitted = with_values(inputs, model.parameters, result.theta)
-        solution, solved = settle(model, fitted, scenario.tolerance, solution)
+        start, solved = result.theta, result.solved
     assert result is not None
+    solution, solved = settle(model, with_values(inputs, model.parameters, result.theta), scenario.tolerance, solution)
     return Fitted(solution, solved.inputs, result, tuple(warnings_of(scenario, model, result)))
 
 

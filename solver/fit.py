@@ -9,7 +9,7 @@ Student's t with the degrees of freedom that leaves. Names: generalised least sq
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import scipy.linalg
@@ -68,8 +68,8 @@ class FitResult:
 
     theta, covariance: (log) parameters and their posterior; informed (p,): 1 - posterior/prior variance; residuals,
     leverage, standardized (n,) in the order of ``Readings.values``; scale of Sigma; dof of its t distribution;
-    jacobian (n, p); sigma (n, n) with the scale in; misfit_own: weighted misfit with the readings' own errors alone, its
-    degrees of freedom and the probability of a larger one.
+    jacobian (n, p); sigma (n, n) with the scale in; own_misfit: weighted misfit with the readings' own errors alone,
+    its degrees of freedom and the probability of a larger one.
     """
 
     parameters: tuple[Parameter, ...]
@@ -112,6 +112,17 @@ def _student(probability: float, dof: float) -> float:
 
 
 @dataclass(frozen=True)
+class _Point:
+    """Parameters with what they give: the solved field, computed readings (n,) and their Jacobian (n, p)."""
+
+    theta: Floats
+    solved: Solved
+    computed: Floats
+    jacobian: Floats
+    steps: int
+
+
+@dataclass(frozen=True)
 class _Model:
     system: System
     inputs: Inputs
@@ -119,6 +130,14 @@ class _Model:
     readings: Readings
     probe: Probe
     takes: Floats  # (g, n + 1) upstream take of every gauging
+
+    def first(self, start: Floats | None) -> _Point:
+        theta = np.array([p.mean for p in self.parameters]) if start is None else start.copy()
+        solved = solve_inputs(self.system, with_values(self.inputs, self.parameters, theta))
+        return self.point(theta, *self.at(theta, solved))
+
+    def point(self, theta: Floats, solved: Solved, computed: Floats, steps: int = 0) -> _Point:
+        return _Point(theta, solved, computed, self.jacobian(solved, theta), steps)
 
     def at(self, theta: Floats, like: Solved | None) -> tuple[Solved, Floats]:
         solved = solve_inputs(self.system, with_values(self.inputs, self.parameters, theta), like)
@@ -142,11 +161,9 @@ class _Model:
         return out
 
 
-def make_model(
-    system: System, inputs: Inputs, parameters: Sequence[Parameter], readings: Readings, like: Solved
-) -> _Model:
+def make_model(system: System, inputs: Inputs, parameters: Sequence[Parameter], readings: Readings) -> _Model:
     """What the fit evaluates, with all matrices that do not depend on the parameters."""
-    probe = make_probe(like.state, readings.x, readings.y)
+    probe = make_probe(system, readings.x, readings.y)
     pairs = zip(readings.gauging_line, readings.gauging_distance, strict=True)
     takes = [upstream_take(system.mesh, line, distance) for line, distance in pairs]
     empty = np.zeros((0, system.mesh.n_unknown + 1))
@@ -166,42 +183,37 @@ def fit(
 
     Raises NotSolvedError where no step lowers the misfit to a settled place.
     """
-    theta = np.array([p.mean for p in parameters]) if start is None else start.copy()
-    solved = solve_inputs(system, with_values(inputs, parameters, theta))
-    model = make_model(system, inputs, parameters, readings, solved)
+    model = make_model(system, inputs, parameters, readings)
     own = readings.reading_covariance()
     sigma0 = own.copy()
     sigma0[: readings.head.size, : readings.head.size] += ground
-    theta, solved, steps = _settle(model, theta, sigma0, 1.0, solved)
+    point = _settle(model, model.first(start), sigma0, 1.0)
+    steps = point.steps
     scale, dof = 1.0, np.inf
     for _ in range(MOST_STEPS):
-        jacobian = model.jacobian(solved, theta)
-        _, computed = model.at(theta, solved)
-        before = theta
+        before = point.theta
         for _ in range(MOST_STEPS):  # the scale at these values: its own small fixed point
-            covariance = _posterior(jacobian, scale**2 * sigma0, parameters)
-            previous, (scale, dof) = scale, _scale(readings.values - computed, sigma0, jacobian, covariance, scale)
+            covariance = _posterior(point.jacobian, scale**2 * sigma0, parameters)
+            residuals, previous = readings.values - point.computed, scale
+            scale, dof = _scale(residuals, sigma0, point.jacobian, covariance, scale)
             if abs(scale - previous) < 1e-6 * scale:
                 break
-        theta, solved, more = _settle(model, theta, sigma0, scale, solved)
-        steps += more
-        if np.all(abs(theta - before) <= 1e-3 * np.sqrt(np.diag(covariance))):
+        point = _settle(model, point, sigma0, scale)
+        steps += point.steps
+        if np.all(abs(point.theta - before) <= 1e-3 * np.sqrt(np.diag(covariance))):
             break
     else:
         raise NotSolvedError("the scale of the errors and the fitted values did not settle together")
     sigma = scale**2 * sigma0
-    jacobian = model.jacobian(solved, theta)
-    covariance = _posterior(jacobian, sigma, parameters)
-    _, computed = model.at(theta, solved)
-    residuals = readings.values - computed
-    leverage, standardized = _diagnostics(residuals, sigma, jacobian, covariance)
-    own_theta, own_solved, _ = _settle(model, theta, own, 1.0, solved)
-    own_misfit, own_dof = _own_misfit(model, own_theta, own_solved, own)
+    covariance = _posterior(point.jacobian, sigma, parameters)
+    residuals = readings.values - point.computed
+    leverage, standardized = _diagnostics(residuals, sigma, point.jacobian, covariance)
+    own_misfit, own_dof = _own_misfit(model, _settle(model, point, own, 1.0), own)
     informed = np.array([1.0 if np.isinf(p.sd) else 1.0 - covariance[k, k] / p.sd**2 for k, p in enumerate(parameters)])
     probability = float(scipy.special.chdtrc(own_dof, own_misfit)) if own_dof > 0 else np.nan
     return FitResult(
-        tuple(parameters), theta, covariance, informed, computed, residuals, standardized, leverage, scale, dof, jacobian,
-        sigma, own_misfit, own_dof, probability, steps, solved,
+        tuple(parameters), point.theta, covariance, informed, point.computed, residuals, standardized, leverage,
+        scale, dof, point.jacobian, sigma, own_misfit, own_dof, probability, steps, point.solved,
     )  # fmt: skip
 
 
@@ -223,26 +235,26 @@ def _posterior(jacobian: Floats, sigma: Floats, parameters: Sequence[Parameter])
         ) from None
 
 
-def _objective(model: _Model, theta: Floats, whitener: Floats, like: Solved) -> tuple[float, Solved, Floats]:
-    solved, computed = model.at(theta, like)
+def _objective(model: _Model, theta: Floats, computed: Floats, whitener: Floats) -> float:
     r = scipy.linalg.solve_triangular(whitener, model.readings.values - computed, lower=True)
     prior = (theta - np.array([p.mean for p in model.parameters])) ** 2 * _precision(model.parameters)
-    return float(r @ r + prior.sum()), solved, computed
+    return float(r @ r + prior.sum())
 
 
-def _settle(model: _Model, theta: Floats, sigma0: Floats, scale: float, solved: Solved) -> tuple[Floats, Solved, int]:
+def _settle(model: _Model, start: _Point, sigma0: Floats, scale: float) -> _Point:
     """Gauss-Newton with step halving to a settled minimum of the penalised misfit."""
-    if theta.size == 0:
-        return theta, solved, 0
+    point = replace(start, steps=0)
+    if point.theta.size == 0:
+        return point
     whitener = scale * np.linalg.cholesky(sigma0) if sigma0.size else sigma0
     precision = _precision(model.parameters)
     mean = np.array([p.mean for p in model.parameters])
-    value, solved, computed = _objective(model, theta, whitener, solved)
+    value = _objective(model, point.theta, point.computed, whitener)
     for step in range(1, MOST_STEPS + 1):
-        jacobian = scipy.linalg.solve_triangular(whitener, model.jacobian(solved, theta), lower=True)
-        r = scipy.linalg.solve_triangular(whitener, model.readings.values - computed, lower=True)
+        jacobian = scipy.linalg.solve_triangular(whitener, point.jacobian, lower=True)
+        r = scipy.linalg.solve_triangular(whitener, model.readings.values - point.computed, lower=True)
         information = jacobian.T @ jacobian + np.diag(precision)
-        gradient = jacobian.T @ r - precision * (theta - mean)
+        gradient = jacobian.T @ r - precision * (point.theta - mean)
         try:
             move = scipy.linalg.cho_solve(scipy.linalg.cho_factor(information), gradient)
         except np.linalg.LinAlgError:
@@ -250,20 +262,21 @@ def _settle(model: _Model, theta: Floats, sigma0: Floats, scale: float, solved: 
             raise
         promised = float(gradient @ move)  # fall of the objective that the linear model promises
         if promised < 1e-8 * (1.0 + value):
-            return theta, solved, step
+            return point
         share = 1.0
         while True:
+            theta = point.theta + share * move
             try:
-                trial = _objective(model, theta + share * move, whitener, solved)
+                solved, computed = model.at(theta, point.solved)
+                trial = _objective(model, theta, computed, whitener)
             except (NotSolvedError, ValueError):
-                trial = (np.inf, solved, computed)
-            if trial[0] < value:
+                trial = np.inf
+            if trial < value:
                 break
             share *= 0.5
             if share < 1e-4:
-                return theta, solved, step  # no step lowers it any more: rounding of the solve
-        theta = theta + share * move
-        value, solved, computed = trial
+                return point  # no step lowers it any more: rounding of the solve
+        value, point = trial, model.point(theta, solved, computed, step)
     raise NotSolvedError(f"the fit did not settle in {MOST_STEPS} steps; are the priors far from the levels?")
 
 
@@ -286,13 +299,12 @@ def _diagnostics(r: Floats, sigma: Floats, jacobian: Floats, covariance: Floats)
     return leverage, r / np.sqrt(np.maximum(np.diag(sigma) - np.diag(spread), 1e-12 * np.diag(sigma)))
 
 
-def _own_misfit(model: _Model, theta: Floats, solved: Solved, own: Floats) -> tuple[float, float]:
+def _own_misfit(model: _Model, point: _Point, own: Floats) -> tuple[float, float]:
     """Misfit weighted with the readings' own errors alone, and its degrees of freedom."""
     if own.size == 0:
         return 0.0, 0.0
-    _, computed = model.at(theta, solved)
-    r = model.readings.values - computed
-    jacobian = model.jacobian(solved, theta)
-    covariance = _posterior(jacobian, own, model.parameters)
-    taken = float(np.trace(jacobian @ covariance @ jacobian.T @ np.linalg.inv(own))) if jacobian.size else 0.0
+    r = model.readings.values - point.computed
+    covariance = _posterior(point.jacobian, own, model.parameters)
+    spread = point.jacobian @ covariance @ point.jacobian.T
+    taken = float(np.trace(spread @ np.linalg.inv(own))) if point.theta.size else 0.0
     return float(r @ np.linalg.solve(own, r)), max(r.size - taken, 0.0)

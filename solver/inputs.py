@@ -133,7 +133,7 @@ def solve_inputs(system: System, inputs: Inputs, like: Solved | None = None) -> 
         setting = replace(setting, flow=aquifer.conductivity * regional.gradient * thick * along)
         state = solve_state(system, setting, factor_of)
         if probe is None:
-            probe = make_probe(state, np.array([regional.x]), np.array([regional.y]))
+            probe = make_probe(system, np.array([regional.x]), np.array([regional.y]))
         if factor_of is None:
             factor_of = state
         found = float(aquifer.saturated_thickness(potentials(state, probe))[0])

@@ -16,7 +16,7 @@ from ..elements.well import PumpingWell
 from .network import BED, HEAD, WALL
 from .setting import Places, Setting
 from .state import State, row_stages, source_supply
-from .system import UNIT, normal_flow, panel_strengths, potential_matrix, source_potentials, source_strengths
+from .system import UNIT, System, normal_flow, panel_strengths, potential_matrix, source_potentials, source_strengths
 
 
 @dataclass(frozen=True)
@@ -29,9 +29,9 @@ class Probe:
     sources: Floats  # (m, s)
 
 
-def make_probe(state: State, x: Floats, y: Floats) -> Probe:
+def make_probe(system: System, x: Floats, y: Floats) -> Probe:
     """Probe at map coordinates x, y (m,) in m."""
-    places, mesh = state.system.places, state.system.mesh
+    places, mesh = system.places, system.mesh
     lx = np.ascontiguousarray(np.asarray(x, dtype=float) - places.origin[0])
     ly = np.ascontiguousarray(np.asarray(y, dtype=float) - places.origin[1])
     return Probe(lx, ly, potential_matrix(places, mesh, lx, ly), source_potentials(places, mesh, lx, ly))
