@@ -51,7 +51,9 @@ def build(scenario: Scenario) -> Model:
         assert beyond.reference_y is not None
         reference = ((beyond.reference_x, beyond.reference_y), beyond.reference_head.value)
     places, setting = sort_elements(aquifer, elements, reference)
-    inputs = Inputs(setting, _regional(scenario))
+    shift = {s.name: s.shift.value for s in scenario.streams if s.shift is not None}
+    shifts = np.array([shift.get(line.name, 0.0) for line in places.lines])
+    inputs = Inputs(replace(setting, shifts=shifts), _regional(scenario))
     parameters = tuple(_parameters(scenario, places))
     return Model(
         places, inputs, parameters, _readings(scenario, places, parameters), scenario.aquifer.porosity, tuple(notes)
@@ -69,11 +71,10 @@ def _well(w: object) -> PumpingWell:
 
 
 def _stream(s: StreamInput, scenario: Scenario, notes: list[str]) -> Stream:
-    shift = 0.0  # the shift is a number of the setting, not of the geometry
-    stage = s.stage + shift
     if s.resistance is None:
-        return Stream(s.name, s.x, s.y, stage, s.width)
-    return Stream(s.name, s.x, s.y, stage, _line_width(s, scenario, notes), s.resistance.value, s.bottom)
+        return Stream(s.name, s.x, s.y, s.stage, s.width)
+    width = _line_width(s, scenario, notes) if s.line_width is None else s.line_width
+    return Stream(s.name, s.x, s.y, s.stage, width, s.resistance.value, s.bottom)
 
 
 def _line_width(s: StreamInput, scenario: Scenario, notes: list[str]) -> float:

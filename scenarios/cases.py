@@ -9,7 +9,9 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from ..elements.stream import Stream
 from ..solver.boundary import Solution
+from ..solver.setting import setting_on
 from .building import Model, build
 from .fitting import Fitted, natural, settle
 from .scenario import Case, Change, Scenario, Value
@@ -36,7 +38,12 @@ def solve_case(scenario: Scenario, model: Model, fitted: Fitted, case: Case) -> 
     for change in case.changes:
         changed = _apply(changed, change)
     new_model = build(changed)
-    solution, _ = settle(new_model, new_model.inputs, scenario.tolerance)
+    solution = None
+    carried = setting_on(model.places, new_model.places, new_model.inputs.setting)
+    if carried is not None:  # only numbers change: what was assembled for the base serves
+        new_model = replace(new_model, places=model.places, inputs=replace(new_model.inputs, setting=carried))
+        solution = fitted.solution
+    solution, _ = settle(new_model, new_model.inputs, scenario.tolerance, solution)
     return CaseAnswer(case.name, changed, new_model, solution, *_differences(scenario, fitted.solution, solution))
 
 
@@ -48,7 +55,9 @@ def fitted_scenario(scenario: Scenario, model: Model, fitted: Fitted) -> Scenari
         value = natural(parameter, model, float(fitted.result.theta[k]))
         signed = parameter.scale * value if parameter.target != "bed" else value
         scenario = _put(scenario, parameter.name, _setter(signed))
-    return scenario
+    width = {line.name: line.width for line in model.places.lines if isinstance(line, Stream)}
+    streams = [s if s.resistance is None else replace(s, line_width=width[s.name]) for s in scenario.streams]
+    return replace(scenario, streams=tuple(streams))
 
 
 def _setter(number: float) -> Callable[[Value], Value]:
@@ -102,6 +111,8 @@ def _put(scenario: Scenario, path: str, new: Callable[[Value], Value]) -> Scenar
                     break
                 else:
                     changed = replace(member, **{field: new(getattr(member, field))})
+                    if field == "resistance":
+                        changed = replace(changed, line_width=None)
                 members = list(getattr(scenario, head))
                 members[i] = changed
                 return replace(scenario, **{head: tuple(members)})

@@ -63,7 +63,11 @@ def settle(model: Model, inputs: Inputs, tolerance: float, like: Solution | None
 
     The strength of a regional gradient depends on the field, the mesh on both: refine until they agree.
     """
-    solution = like or solve_places(model.places, inputs.setting, tolerance=tolerance)
+    solution = like
+    if solution is None:
+        solution = solve_places(model.places, inputs.setting, tolerance=tolerance)
+        if inputs.regional is None:
+            return solution, Solved(inputs, solution.state, None, np.zeros(2))
     for _ in range(MOST_TURNS):
         solved = solve_inputs(solution.state.system, inputs)
         solution = solution_of(model.places, solved.state, tolerance)

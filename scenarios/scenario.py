@@ -117,6 +117,7 @@ class StreamInput:
     bottom: float | None  # underside of the clogged layer, m below stage
     starts_with: Value | None  # m3/d
     into: str | None
+    line_width: float | None = None  # m: the width that stood for the bed in the fit, kept in every case
 
 
 @dataclass(frozen=True)

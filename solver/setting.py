@@ -1,7 +1,7 @@
 """Everything about a site that is a number and no geometry: what the fit may vary and a case may change."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, fields, replace
 
 import numpy as np
 
@@ -88,6 +88,48 @@ def sort_elements(
         np.nan if reference is None else float(reference[1]),
     )
     return places, setting
+
+
+def setting_on(places: Places, other: Places, setting: Setting) -> Setting | None:
+    """The setting of another site's numbers on the geometry of ``places``; None where the geometries differ.
+
+    Stages that differ evenly along a line become shifts, so that what was assembled for ``places`` serves again.
+    """
+    if (places.origin, places.scale, places.reference) != (other.origin, other.scale, other.reference):
+        return None
+    if (places.flow.x0, places.flow.y0) != (other.flow.x0, other.flow.y0):
+        return None
+    shifts = setting.shifts.copy()
+    for kind in ("wells", "areas", "lines"):
+        mine, theirs = getattr(places, kind), getattr(other, kind)
+        if len(mine) != len(theirs):
+            return None
+        for k, (a, b) in enumerate(zip(mine, theirs, strict=True)):
+            if not _same_shape(a, b):
+                return None
+            if isinstance(a, Stream | LakeEdge):
+                rise = np.atleast_1d(b.stage - a.stage)
+                if np.ptp(rise) > 1e-12 * np.abs(rise).max():
+                    return None
+                shifts[k] += rise[0]
+    return replace(setting, shifts=shifts)
+
+
+def _same_shape(a: Element, b: Element) -> bool:
+    """Whether two elements differ at most in numbers that a setting holds."""
+    if type(a) is not type(b):
+        return False
+    numbers = {"rate", "stage", "inflow", "width", "resistance"}
+    for name in (f.name for f in fields(a) if f.name not in numbers):
+        if not _equal(getattr(a, name), getattr(b, name)):
+            return False
+    return not isinstance(a, Stream) or (a.resistance is None) == (b.resistance is None)  # type: ignore[union-attr]
+
+
+def _equal(a: object, b: object) -> bool:
+    if isinstance(a, tuple) and isinstance(b, tuple):
+        return len(a) == len(b) and all(_equal(p, q) for p, q in zip(a, b, strict=True))
+    return bool(np.array_equal(a, b)) if isinstance(a, np.ndarray) else a == b
 
 
 def _areas_on_land(areas: list[RechargeArea], lines: Sequence[Line]) -> tuple[RechargeArea, ...]:
