@@ -21,7 +21,7 @@ from .pathlines import Pathlines, trace
 Floats = NDArray[np.float64]
 FIRST_PATHS = 144
 MOST_PATHS = 1500
-PARTED = 1e-8  # rad: neighbours that start this close and still part have a dividing line between them
+PARTED = 1e-7  # rad: neighbours that start this close and still part have a dividing line between them
 WIDE = 0.05  # of the zone's width: neighbouring pathlines farther apart get others between them
 TOGETHER = 1e-4  # of the zone's width: neighbours that stay this close run along the same line
 FRONT = 0.03  # of a front's size: neighbouring places on it farther apart get others between them
@@ -29,7 +29,8 @@ STEP_ERROR = 1e-4  # m of position a step
 CLOSE = 1e-5  # of a ring's size: vertices that move its line by less are left out
 CUT = 1e-6  # of the area: more than this outside the clip makes a zone open
 SLIVER = 1e-6  # of the area: smaller parts and holes come from rounding
-SAMPLES = 40  # places on a pathline at which its distance to the next one is taken
+SAMPLES = 24  # places on a pathline at which its distance to the next one is taken
+SPARSE = 8  # one in so many points of the pathlines tells how wide the zone is
 STRETCH = 1.0001  # start on a circle just outside the screen
 
 
@@ -151,7 +152,8 @@ def _first_is_spent(paths: Pathlines) -> NDArray[np.bool_]:
 
 def _size(paths: Pathlines) -> float:
     """Width (m) of the ground that the paths cover: the area of their hull over its length."""
-    hull = shapely.convex_hull(shapely.LineString(np.concatenate([p[:, :2] for p in paths.points])))
+    some = [part for p in paths.points for part in (p[::SPARSE, :2], p[-1:, :2])]
+    hull = shapely.convex_hull(shapely.LineString(np.concatenate(some)))
     x0, y0, x1, y1 = shapely.bounds(hull)
     return float(hull.area / max(np.hypot(x1 - x0, y1 - y0), 1e-9))
 
