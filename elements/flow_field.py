@@ -8,6 +8,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from . import kernels_field
 from .aquifer import Aquifer
+from .blocks import in_blocks
 from .field_arrays import FieldArrays, Floats, Panels, log_moments, no_panels, panel_moments, ring_arrays
 from .kernels_line import N_COEF
 from .recharge import RechargeArea
@@ -66,7 +67,7 @@ class FlowField:
         local_x = np.ascontiguousarray(xs.ravel() - self.origin[0])
         local_y = np.ascontiguousarray(ys.ravel() - self.origin[1])
         out = [np.empty(local_x.size) for _ in range(n_out)]
-        driver(local_x, local_y, self.arrays, *out)
+        in_blocks(lambda s: driver(local_x[s], local_y[s], self.arrays, *(a[s] for a in out)), local_x.size)
         return [a.reshape(xs.shape) for a in out]
 
 

@@ -42,5 +42,4 @@ if "NUMBA_CACHE_DIR" not in os.environ:
 # of a product with a sum: the series and recurrences are chains of them. NaN stays NaN, zero keeps its sign.
 _FLAGS = {"cache": True, "error_model": "numpy", "fastmath": {"contract"}}
 kernel = numba.njit(**_FLAGS)
-parallel_kernel = numba.njit(parallel=True, **_FLAGS)
-prange = numba.prange
+driver = numba.njit(nogil=True, **_FLAGS)  # a loop over points, called from Python: see ``blocks``

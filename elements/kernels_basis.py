@@ -6,20 +6,20 @@ form of ``kernels_line``, with ``doublets`` giving the potential of a unit jump 
 
 import numpy as np
 
-from .jit import parallel_kernel, prange
+from .jit import driver
 from .kernels_field import NEAR2, constant_doublet, panel_place
 from .kernels_line import N_WORK, far_terms, near_derivatives, near_potentials
 
 
-@parallel_kernel
+@driver
 def basis_potentials(x, y, panels, first, tables, log_scale, out):
     """Potential of every unit strength at points x, y (m,) into out (m, n).
 
     first (p,): the column of order 0 of each panel; tables (kinds, N_COEF, N_MOMENT): far moments by kind.
     """
-    for i in prange(x.size):
-        work = np.empty((2, N_WORK), np.complex128)
-        powers = np.empty(tables.shape[2])
+    work = np.empty((2, N_WORK), np.complex128)
+    powers = np.empty(tables.shape[2])
+    for i in range(x.size):
         for p in range(panels.kind.size):
             c = panels.panel[p, 8] / (2.0 * np.pi)
             dx = x[i] - panels.panel[p, 4]
@@ -53,11 +53,11 @@ def basis_potentials(x, y, panels, first, tables, log_scale, out):
                 out[i, first[p]] += c * (np.log(panels.panel[p, 8]) - log_scale)
 
 
-@parallel_kernel
+@driver
 def basis_normal_flows(x, y, nx, ny, panels, first, out):
     """Flow (m2/d) along the unit vectors nx, ny of every unit strength at points x, y (m,) into out (m, n)."""
-    for i in prange(x.size):
-        work = np.empty((2, N_WORK), np.complex128)
+    work = np.empty((2, N_WORK), np.complex128)
+    for i in range(x.size):
         for p in range(panels.kind.size):
             tau, rest = panel_place(x[i], y[i], panels.panel, p)
             near_derivatives(panels.kind[p], tau, rest, panels.n_coef[p], work[0], work[1])
@@ -70,9 +70,9 @@ def basis_normal_flows(x, y, nx, ny, panels, first, out):
                 out[i, first[p] + n] = w.real * nx[i] - w.imag * ny[i]
 
 
-@parallel_kernel
+@driver
 def doublets(x, y, panels, out):
     """Potential of a unit jump (m3/d) along every panel at points x, y (m,) into out (m, p)."""
-    for i in prange(x.size):
+    for i in range(x.size):
         for p in range(panels.kind.size):
             out[i, p] = constant_doublet(x[i], y[i], panels.panel, p)

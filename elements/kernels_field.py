@@ -1,13 +1,12 @@
 """The superposition at a point: the very kernels that solver and tracer share.
 
 ``potential_at`` and ``discharge_at`` take one point in local coordinates, a ``FieldArrays`` and a work array
-(2, N_WORK) complex; the drivers at the end run over points in parallel, elements inside, so that a result does
-not depend on the number of threads.
+(2, N_WORK) complex; the drivers at the end run over points, elements inside.
 """
 
 import numpy as np
 
-from .jit import kernel, parallel_kernel, prange
+from .jit import driver, kernel
 from .kernels_area import edge_log_integral, inside_ring_crossings, log_distance2
 from .kernels_line import (
     N_WORK,
@@ -220,32 +219,32 @@ def stream_function_at(x, y, f, work):
     return psi
 
 
-@parallel_kernel
+@driver
 def potentials(x, y, f, out):
     """Potential at points x, y (n,) into out (n,)."""
-    for i in prange(x.size):
-        work = np.empty((2, N_WORK), np.complex128)
+    work = np.empty((2, N_WORK), np.complex128)
+    for i in range(x.size):
         out[i] = potential_at(x[i], y[i], f, work)
 
 
-@parallel_kernel
+@driver
 def discharges(x, y, f, qx, qy):
     """Discharge vector at points x, y (n,) into qx, qy (n,)."""
-    for i in prange(x.size):
-        work = np.empty((2, N_WORK), np.complex128)
+    work = np.empty((2, N_WORK), np.complex128)
+    for i in range(x.size):
         qx[i], qy[i] = discharge_at(x[i], y[i], f, work)
 
 
-@parallel_kernel
+@driver
 def stream_functions(x, y, f, out):
     """Stream function at points x, y (n,) into out (n,)."""
-    for i in prange(x.size):
-        work = np.empty((2, N_WORK), np.complex128)
+    work = np.empty((2, N_WORK), np.complex128)
+    for i in range(x.size):
         out[i] = stream_function_at(x[i], y[i], f, work)
 
 
-@parallel_kernel
+@driver
 def recharges(x, y, f, out):
     """Recharge rate (m/d) at points x, y (n,) into out (n,)."""
-    for i in prange(x.size):
+    for i in range(x.size):
         out[i] = recharge_at(x[i], y[i], f)

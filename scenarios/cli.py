@@ -1,11 +1,16 @@
 """The command line: run, check, start, schema. Heavy packages are imported inside the commands."""
 
+import os
 import sys
 from enum import StrEnum
 from pathlib import Path
 from typing import Annotated, Any
 
 import typer
+
+# A site's matrices are small: the threads of the linear algebra would spend more time waiting than working. Must be set
+# before numpy is loaded; what the user has set stays.
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
 
 ANSWERED, FAILED_CHECK, WRONG_INPUT, OUR_FAULT, STOPPED = 0, 1, 2, 3, 130
 # errors of other rooms by name, since their modules are heavy to import; with the rule that is printed

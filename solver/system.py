@@ -9,6 +9,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from ..elements.aquifer import Aquifer
+from ..elements.blocks import in_blocks
 from ..elements.field_arrays import Floats, Ints, Panels, make_panels
 from ..elements.flow_field import FlowField, superpose
 from ..elements.kernels_basis import basis_normal_flows, basis_potentials, doublets
@@ -120,7 +121,8 @@ def potential_matrix(places: Places, mesh: Mesh, x: Floats, y: Floats) -> Floats
     first = np.arange(panels.kind.size, dtype=np.int64) * N_COEF
     full = np.zeros((m, panels.kind.size * N_COEF))
     tables = np.stack([moment_table(k, N_COEF) for k in range(MAP + 1)])
-    basis_potentials(x, y, panels, first, tables, float(np.log(places.scale)), full)
+    log_scale = float(np.log(places.scale))
+    in_blocks(lambda s: basis_potentials(x[s], y[s], panels, first, tables, log_scale, full[s]), m)
     out = np.ones((m, mesh.n_unknown + 1))
     blocks = full.reshape(m, panels.kind.size, N_COEF)
     view = out[:, :-1].reshape(m, panels.kind.size, N)
@@ -130,7 +132,7 @@ def potential_matrix(places: Places, mesh: Mesh, x: Floats, y: Floats) -> Floats
     wall = np.flatnonzero(mesh.condition == WALL)
     if wall.size:
         angle = np.empty((m, panels.kind.size))
-        doublets(x, y, panels, angle)
+        in_blocks(lambda s: doublets(x[s], y[s], panels, angle[s]), m)
         view[:, :, 0] += angle @ (jump_matrix(mesh) * mesh.lengths()[None, :])
     return out
 
@@ -157,7 +159,7 @@ def _wall_rows(mesh: Mesh, panels: Panels, rows: Rows, wall: np.ndarray) -> Floa
     first = np.arange(panels.kind.size, dtype=np.int64) * N_COEF
     full = np.zeros((z.size, panels.kind.size * N_COEF))
     parts = [np.ascontiguousarray(a) for a in (z.real, z.imag, normal.real, normal.imag)]
-    basis_normal_flows(*parts, panels, first, full)
+    in_blocks(lambda s: basis_normal_flows(*(a[s] for a in parts), panels, first, full[s]), z.size)
     blocks = full.reshape(z.size, panels.kind.size, N_COEF)
     out = np.zeros((z.size, mesh.n_unknown + 1))
     view = out[:, :-1].reshape(z.size, panels.kind.size, N)

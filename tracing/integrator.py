@@ -9,7 +9,7 @@ Coefficients: Dormand & Prince (1980); dense output of order 4: Shampine (1986).
 
 import numpy as np
 
-from ..elements.jit import kernel, parallel_kernel, prange
+from ..elements.jit import driver, kernel
 from ..elements.kernels_field import discharge_at, recharge_at
 from ..elements.kernels_line import N_WORK
 from .endings import Ending
@@ -382,11 +382,11 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
     return n_points, reason, named, n_tried
 
 
-@parallel_kernel
+@driver
 def follow_all(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks, points, share, result):
     """Follow particles x, y (n,); outputs as in ``follow`` with a first axis n; result (n, 4) its return values."""
-    for i in prange(x.size):
-        work = np.empty((2, N_WORK), np.complex128)
+    work = np.empty((2, N_WORK), np.complex128)
+    for i in range(x.size):
         result[i, 0], result[i, 1], result[i, 2], result[i, 3] = follow(
             x[i],
             y[i],

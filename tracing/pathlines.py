@@ -6,6 +6,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from ..elements.blocks import in_blocks
 from ..elements.flow_field import FlowField
 from .endings import Ending
 from .integrator import follow_all
@@ -14,6 +15,7 @@ from .obstacles import Line, Obstacles, make_obstacles
 TOLERANCE = 1e-5  # m of position a step; a relative one would mean nothing on map coordinates
 MOST_POINTS = 6000
 CHUNK = 192
+FEW = 4  # particles: fewer are followed by one thread
 REST = 1e-7  # of the typical discharge: slower water has come to rest
 
 Floats = NDArray[np.float64]
@@ -91,12 +93,16 @@ def trace(
     points: list[Floats] = []
     buffer = np.empty((min(n, CHUNK), most_points, 3))
     for start in range(0, n, CHUNK):
-        part = slice(start, min(start + CHUNK, n))
-        size = part.stop - start
-        follow_all(
-            local_x[part], local_y[part], phi[part], float(direction), flow.arrays, medium, arrays, float(t_max), float(tolerance),
-            q_rest, marks, at_marks[part], buffer[:size], share[part], result[part],
-        )  # fmt: skip
+        size = min(CHUNK, n - start)
+
+        def work(part: slice, start: int = start) -> None:
+            at = slice(start + part.start, start + part.stop)
+            follow_all(
+                local_x[at], local_y[at], phi[at], float(direction), flow.arrays, medium, arrays, float(t_max),
+                float(tolerance), q_rest, marks, at_marks[at], buffer[part], share[at], result[at],
+            )  # fmt: skip
+
+        in_blocks(work, size, FEW)
         for i in range(size):
             path = buffer[i, : result[start + i, 0]].copy()
             path[:, 0] += flow.origin[0]
