@@ -12,7 +12,7 @@ from ..tracing.pathlines import trace
 from ..tracing.stagnation import StagnationPoint, stagnation_points
 from ..tracing.zones import CaptureZone, TimeZone, capture_zone
 from .cases import CaseAnswer
-from .context import Check, Context, Result, Row, drawn_area, obstacles_of
+from .context import BASE, Check, Context, Result, Row, drawn_area, obstacles_of
 from .map_content import MapContent, ZoneMark
 from .names import safe_file_name
 
@@ -126,7 +126,8 @@ def _result(
         f"{100 * s:.0f}% {name}" for name, s in sorted(zone.supply.items(), key=lambda p: -p[1]) if s > 0.005
     )
     extent = "leaves the drawn area; within it" if zone.open else "covers"
-    words = f"{well} at {rate:.4g} m3/d: capture zone {extent} {zone.area / 1e6:.3f} km2; supplied by {sources}."
+    where = "" if case.name == BASE else f", case {case.name}"
+    words = f"{well} at {rate:.4g} m3/d{where}: capture zone {extent} {zone.area / 1e6:.3f} km2; supplied by {sources}."
     check = Check(f"water of {well} traced to its sources in {case.name}", unknown <= BUDGET, unknown, BUDGET)
     return Result("capture_zone", case.name, entry, words, layers, {"time_zones": table}, files, (check,), on_map)
 
