@@ -19,6 +19,7 @@ from .scenario import Scenario
 from .summary import parameter_rows, residual_rows
 
 CLOSED = 1e-6  # of the water that moves: a balance must close to this
+LEAST = 1e-6  # m3/d: less does not move at all
 ROUND_CLOSED = 1e-4  # the same by quadrature of the flow round the whole site
 
 
@@ -116,7 +117,7 @@ def closure(solution: Solution) -> float:
     """What the balance leaves open, as a share of the water that moves."""
     into = sum(r.inflow for r in solution.balance)
     out = sum(r.outflow for r in solution.balance)
-    return abs(into - out) / max(into, out, 1e-12)
+    return abs(into - out) / max(into, out, LEAST)
 
 
 def _field_checks(case: CaseAnswer) -> list[Check]:
@@ -142,9 +143,11 @@ def round_closure(solution: Solution) -> float:
     qx, qy = solution.flow.discharge(
         places.origin[0] + radius * np.cos(angles), places.origin[1] + radius * np.sin(angles)
     )
-    into = -float(np.mean(qx * np.cos(angles) + qy * np.sin(angles))) * 2.0 * np.pi * radius
+    round_trip = 2.0 * np.pi * radius
+    into = -float(np.mean(qx * np.cos(angles) + qy * np.sin(angles))) * round_trip
     row = next(r for r in solution.balance if r.feature == BEYOND)
-    moved = max(sum(r.inflow for r in solution.balance), sum(r.outflow for r in solution.balance), 1e-12)
+    passing = float(np.mean(np.hypot(qx, qy))) * round_trip  # regional flow crosses the site without being in a row
+    moved = max(sum(r.inflow for r in solution.balance), sum(r.outflow for r in solution.balance), passing, LEAST)
     return abs(into - (row.inflow - row.outflow)) / moved
 
 

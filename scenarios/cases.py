@@ -78,6 +78,8 @@ def _apply(scenario: Scenario, change: Change) -> Scenario:
     left = tuple(m for m in members if m.name != name)
     if len(left) == len(members):
         raise ValueError(f"case change: {change.path!r} names nothing to remove")
+    if kind == "streams":  # its gaugings measure nothing any more
+        scenario = replace(scenario, gaugings=tuple(g for g in scenario.gaugings if g.stream != name))
     return replace(scenario, **{kind: left})
 
 
@@ -108,7 +110,7 @@ def _put(scenario: Scenario, path: str, new: Callable[[Value], Value]) -> Scenar
                     stage = np.array([new(Value(path, float(s), "m")).value for s in member.stage])
                     changed = replace(member, stage=stage)
                 elif field is None or getattr(member, field, None) is None:
-                    break
+                    continue  # a name may begin another one: "Mill" and "Mill.1"
                 else:
                     changed = replace(member, **{field: new(getattr(member, field))})
                     if field == "resistance":
