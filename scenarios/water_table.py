@@ -11,6 +11,7 @@ from ..elements.flow_field import FlowField
 from ..elements.lake import LakeEdge
 from ..elements.outline import Outline
 from ..solver.balance import exchange_pieces
+from ..solver.network import Line
 from ..tracing.pathlines import trace
 from .cases import CaseAnswer
 from .context import Check, Context, Result, Row, obstacles_of
@@ -20,6 +21,7 @@ from .map_content import MapContent, Reach
 Floats = NDArray[np.float64]
 GRID = 170  # cells along the longer side of the drawn area
 STILL = 1e-3  # of the largest strength on the lines: less exchange than this is none
+REACH = 3  # cells: a summit is higher than all ground within
 ARROWS = 7  # arrows along the longer side
 
 
@@ -32,7 +34,7 @@ def water_table(case: CaseAnswer, context: Context, interval: float | None) -> R
         interval = contour_interval(low, high) if high > low else 1.0
     lines = contour_lines(x, y, head, contour_levels(low, high, interval))
     reaches = reaches_of(case)
-    summits, basins = _extremes(x, y, head)
+    summits, basins = _extremes(case, x, y, head)
     arrows = _arrows(case, x, y, head)
     entry: dict[str, Any] = {
         "question": "water_table",
@@ -54,10 +56,12 @@ def water_table(case: CaseAnswer, context: Context, interval: float | None) -> R
         ],
     }
 
+    near = REACH * float(x[1] - x[0])
+
     def on_map(content: MapContent) -> MapContent:
         return replace(
-            content, x=x, y=y, head=head, interval=interval, reaches=tuple(r for _, _, r in reaches), arrows=tuple(arrows),
-            summits=tuple(summits), basins=tuple(basins),
+            content, x=x, y=y, head=head, interval=interval, arrows=tuple(arrows), reaches=tuple(r for _, _, r in reaches),
+            summits=tuple(_away_from_wells(case, summits, near)), basins=tuple(_away_from_wells(case, basins, near)),
         )  # fmt: skip
 
     words = f"Water table {low:.2f} to {high:.2f} m, contours every {interval:g} m."
@@ -123,21 +127,39 @@ def reaches_of(case: CaseAnswer) -> list[tuple[str, float, Reach]]:
     return out
 
 
-def _extremes(x: Floats, y: Floats, head: Floats) -> tuple[list, list]:
-    """Summits and basins of the grid: cells higher or lower than all cells within three of them, all on ground."""
-    reach = 3
-    summits, basins = [], []
-    for j in range(reach, len(y) - reach):
-        for i in range(reach, len(x) - reach):
-            around = head[j - reach : j + reach + 1, i - reach : i + reach + 1]
-            here = head[j, i]
-            if not np.all(np.isfinite(around)):
-                continue
-            if here == around.max() and np.sum(around == here) == 1:
-                summits.append((float(x[i]), float(y[j]), float(here)))
-            elif here == around.min() and np.sum(around == here) == 1:
-                basins.append((float(x[i]), float(y[j]), float(here)))
-    return summits, basins
+def _extremes(case: CaseAnswer, x: Floats, y: Floats, head: Floats) -> tuple[list, list]:
+    """Summits and basins: cells higher or lower than all cells within REACH of them, all on ground, off the waters.
+
+    At a stream's end or beside a lake the head is prescribed; a highest or lowest place there is no news.
+    """
+    window = 2 * REACH + 1
+    if min(head.shape) < window:
+        return [], []
+    around = np.lib.stride_tricks.sliding_window_view(head, (window, window)).reshape(
+        head.shape[0] - 2 * REACH, head.shape[1] - 2 * REACH, -1
+    )
+    here = head[REACH:-REACH, REACH:-REACH]
+    alone = np.isfinite(around).all(axis=2) & (np.sum(around == here[..., None], axis=2) == 1)
+    waters = [line for line in case.model.places.lines if not isinstance(line, Outline)]
+    lines = shapely.multilinestrings([_closed_line(line) for line in waters]) if waters else None
+    found = []
+    for extreme in (around.max(axis=2), around.min(axis=2)):
+        j, i = np.nonzero(alone & (here == extreme))
+        at = [(float(x[REACH + a]), float(y[REACH + b]), float(here[b, a])) for b, a in zip(j, i, strict=True)]
+        near = REACH * float(x[1] - x[0])
+        found.append([p for p in at if lines is None or shapely.distance(shapely.Point(p[:2]), lines) > near])
+    return found[0], found[1]
+
+
+def _closed_line(line: Line) -> shapely.LineString:
+    places = np.stack([line.x, line.y], axis=1)
+    return shapely.LineString(np.concatenate([places, places[:1]]) if getattr(line, "closed", False) else places)
+
+
+def _away_from_wells(case: CaseAnswer, places: list, reach: float) -> list:
+    """Places that no well's own mark stands on."""
+    wells = case.model.places.wells
+    return [p for p in places if all(np.hypot(p[0] - w.x, p[1] - w.y) > reach for w in wells)]
 
 
 def _arrows(case: CaseAnswer, x: Floats, y: Floats, head: Floats) -> list[Floats]:
