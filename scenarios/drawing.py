@@ -1,5 +1,7 @@
 """From answers to the map of a case: what stands on it, its footer, its files."""
 
+import os
+import sys
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -29,6 +31,33 @@ class CaseMap:
         with mpl.rc_context({**STYLE, "svg.hashsalt": stem.name}):
             figure.savefig(stem.with_suffix(".svg"), metadata={"Date": None, "Title": self.content.title})
         figure.savefig(stem.with_suffix(".png"), dpi=DPI, metadata={"Software": None})
+
+
+def save_maps(maps: list[tuple[CaseMap, Path]]) -> None:
+    """Save maps to their stems; where the system can, the first one here and the others beside it in a second process.
+
+    Drawing starts no threads and compiled code leaves none behind, so that a fork is safe. What the second process
+    could not save is drawn here, where an error is raised as usual.
+    """
+    first, others = maps[:1], maps[1:]
+    child = os.fork() if others and sys.platform == "linux" else None
+    if child == 0:
+        code = 1
+        try:
+            for drawn, stem in others:
+                drawn.save(stem)
+            code = 0
+        finally:
+            os._exit(code)
+    saved = False
+    try:
+        for drawn, stem in first:
+            drawn.save(stem)
+    finally:
+        if child is not None:
+            saved = os.waitpid(child, 0)[1] == 0
+    for drawn, stem in [] if saved else others:
+        drawn.save(stem)
 
 
 def map_of(answers: Answers, case_name: str) -> CaseMap:

@@ -8,7 +8,7 @@ import shapely
 
 from .answering import Answers
 from .context import BASE, Row
-from .drawing import map_of
+from .drawing import map_of, save_maps
 from .layers import layer_text, plain
 from .names import safe_file_name
 from .summary import parameter_rows, residual_rows
@@ -36,12 +36,14 @@ def _produce(answers: Answers, folder: Path) -> None:
     for name, table in _tables(answers).items():
         _text(folder / f"{name}.csv", table_text(table))
     taken: set[str] = set()
+    maps = []
     for case in answers.cases:
         if case != BASE and all(r.case != case for r in answers.results):
             continue
         stem = "map" if case == BASE else safe_file_name(f"map_{case}", {*taken, "map"})
         taken.add(stem)
-        map_of(answers, case).save(folder / stem)
+        maps.append((map_of(answers, case), folder / stem))
+    save_maps(maps)
 
 
 def _text(path: Path, text: str) -> None:
