@@ -22,7 +22,7 @@ _HOME = {
     "load": ".scenarios.reading",
     "answer": ".scenarios.answering",
 }
-__all__ = sorted(_HOME)
+__all__ = list(_HOME)
 
 
 def __getattr__(name: str) -> Any:

@@ -20,7 +20,7 @@ def in_blocks(work: Callable[[slice], None], n: int, small: int = SMALL) -> None
     As many threads as numba would use (NUMBA_NUM_THREADS, else the cores of the process); an exception in one of
     the blocks is raised.
     """
-    threads = int(numba.config.NUMBA_NUM_THREADS)
+    threads = int(numba.config.NUMBA_NUM_THREADS)  # type: ignore[attr-defined]
     if n <= small or threads == 1:
         work(slice(0, n))
         return

@@ -9,6 +9,7 @@ import hashlib
 import os
 import tempfile
 from pathlib import Path
+from typing import Any
 
 import numba
 import platformdirs
@@ -36,10 +37,10 @@ def _cache_folder() -> Path:
 
 
 if "NUMBA_CACHE_DIR" not in os.environ:
-    numba.config.CACHE_DIR = str(_cache_folder())
+    numba.config.CACHE_DIR = str(_cache_folder())  # type: ignore[attr-defined]
 
 # Division by zero gives inf instead of a hidden branch (which would stop vectorisation). Of fastmath only the fusing
 # of a product with a sum: the series and recurrences are chains of them. NaN stays NaN, zero keeps its sign.
-_FLAGS = {"cache": True, "error_model": "numpy", "fastmath": {"contract"}}
+_FLAGS: dict[str, Any] = {"cache": True, "error_model": "numpy", "fastmath": {"contract"}}
 kernel = numba.njit(**_FLAGS)
 driver = numba.njit(nogil=True, **_FLAGS)  # a loop over points, called from Python: see ``blocks``

@@ -60,7 +60,8 @@ class Answers:
                 "scale": None if result is None else result.scale,
                 "degrees_of_freedom": None if result is None or not np.isfinite(result.dof) else result.dof,
                 "own_errors": None if result is None else {
-                    "misfit": result.own_misfit, "degrees_of_freedom": result.own_dof, "probability": result.own_probability,
+                    "misfit": result.own_misfit, "degrees_of_freedom": result.own_dof,
+                    "probability": result.own_probability,
                 },
                 "warnings": list(self.fitted.warnings),
             },
@@ -127,8 +128,8 @@ def _field_checks(case: CaseAnswer) -> list[Check]:
     return [
         Check(f"boundary conditions met in {case.name} (m)", report.met, report.max_misfit, report.tolerance),
         Check(f"balance of {case.name} closes (share)", opened <= CLOSED, opened, CLOSED),
-        Check(f"flow round the site agrees with the balance of {case.name} (share)", round_open <= ROUND_CLOSED, round_open,
-              ROUND_CLOSED),
+        Check(f"flow round the site agrees with the balance of {case.name} (share)", round_open <= ROUND_CLOSED,
+              round_open, ROUND_CLOSED),
     ]  # fmt: skip
 
 
@@ -165,9 +166,8 @@ def report_lines(answers: Answers) -> list[str]:
         lines.append(f"fit: {len(result.parameters)} numbers, scale {result.scale:.2f}{own}")
         for row in parameter_rows(answers.scenario, answers.model, answers.fitted):
             if row["informed"] is not None:
-                lines.append(
-                    f"  {row['name']}: {row['value']:.4g} ± {row['sd']:.2g} {row['unit']}, informed {row['informed']:.0%}"
-                )
+                spread = f"{row['value']:.4g} ± {row['sd']:.2g} {row['unit']}"
+                lines.append(f"  {row['name']}: {spread}, informed {row['informed']:.0%}")
     lines += [r.words for r in answers.results]
     lines += [f"warning: {w}" for w in answers.fitted.warnings]
     lines += [f"note: {n}" for n in answers.notes]

@@ -6,6 +6,7 @@ is carried along when a rate changes.
 
 from collections.abc import Callable
 from dataclasses import dataclass, replace
+from typing import Any, TypeVar
 
 import numpy as np
 
@@ -15,6 +16,8 @@ from ..solver.setting import setting_on
 from .building import Model, build
 from .fitting import Fitted, natural, settle
 from .scenario import Case, Change, Scenario, Value
+
+_Any = TypeVar("_Any")
 
 
 @dataclass(frozen=True)
@@ -74,13 +77,13 @@ def _apply(scenario: Scenario, change: Change) -> Scenario:
     kind, _, name = change.path.partition(".")
     members = getattr(scenario, kind)
     if change.verb == "add":
-        return replace(scenario, **{kind: (*members, change.feature)})
+        return _with(scenario, kind, (*members, change.feature))
     left = tuple(m for m in members if m.name != name)
     if len(left) == len(members):
         raise ValueError(f"case change: {change.path!r} names nothing to remove")
     if kind == "streams":  # its gaugings measure nothing any more
         scenario = replace(scenario, gaugings=tuple(g for g in scenario.gaugings if g.stream != name))
-    return replace(scenario, **{kind: left})
+    return _with(scenario, kind, left)
 
 
 def _changed(value: float, change: Change) -> float:
@@ -90,6 +93,11 @@ def _changed(value: float, change: Change) -> float:
     if change.factor is not None:
         return value * change.factor
     return value + (change.amount or 0.0)
+
+
+def _with(thing: _Any, name: str, value: Any) -> _Any:
+    """The same with one field, known by its name, put in anew."""
+    return replace(thing, **{name: value})  # type: ignore[type-var]
 
 
 _FIELDS = {
@@ -117,9 +125,9 @@ def _put(scenario: Scenario, path: str, new: Callable[[Value], Value]) -> Scenar
                         changed = replace(changed, line_width=None)
                 members = list(getattr(scenario, head))
                 members[i] = changed
-                return replace(scenario, **{head: tuple(members)})
+                return _with(scenario, head, tuple(members))
     elif head == "aquifer" and isinstance(getattr(scenario.aquifer, rest, None), Value):
-        return replace(scenario, aquifer=replace(scenario.aquifer, **{rest: new(getattr(scenario.aquifer, rest))}))
+        return replace(scenario, aquifer=_with(scenario.aquifer, rest, new(getattr(scenario.aquifer, rest))))
     elif head == "outline" and scenario.outline is not None and rest == "inflow":
         return replace(scenario, outline=replace(scenario.outline, inflow=new(scenario.outline.inflow)))
     elif head == "beyond":
@@ -128,7 +136,7 @@ def _put(scenario: Scenario, path: str, new: Callable[[Value], Value]) -> Scenar
             return replace(scenario, beyond=replace(beyond, reference_head=new(beyond.reference_head)))
         key = rest.removeprefix("flow.")
         if flow is not None and isinstance(getattr(flow, key, None), Value):
-            return replace(scenario, beyond=replace(beyond, flow=replace(flow, **{key: new(getattr(flow, key))})))
+            return replace(scenario, beyond=replace(beyond, flow=_with(flow, key, new(getattr(flow, key)))))
     raise ValueError(f"{path!r} names no value that can be changed")
 
 

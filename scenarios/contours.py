@@ -33,4 +33,5 @@ def contour_levels(low: float, high: float, interval: float) -> Floats:
 def contour_lines(x: Floats, y: Floats, head: Floats, levels: Floats) -> list[tuple[float, Floats]]:
     """Lines (level, (n, 2) places) of a grid of heads (ny, nx); cells with NaN carry no line."""
     generator = contourpy.contour_generator(x, y, np.ma.masked_invalid(head))
-    return [(float(level), line) for level in levels for line in generator.lines(float(level)) if len(line) > 1]
+    found = [(float(level), np.asarray(line)) for level in levels for line in generator.lines(float(level))]
+    return [(level, line) for level, line in found if len(line) > 1]

@@ -89,8 +89,8 @@ def map_of(answers: Answers, case_name: str) -> CaseMap:
     empty = np.zeros(0)
     failed = tuple(c.name for c in answers.checks if not c.passed)
     content = MapContent(
-        scenario.title, "" if case_name == BASE else f"Case: {case_name}", (site.x0, site.x1, site.y0, site.y1), site.crs,
-        site.heights, _footer(answers, case_name, failed), empty, empty, np.zeros((0, 0)), 1.0, tuple(lakes),
+        scenario.title, "" if case_name == BASE else f"Case: {case_name}", (site.x0, site.x1, site.y0, site.y1),
+        site.crs, site.heights, _footer(answers, case_name, failed), empty, empty, np.zeros((0, 0)), 1.0, tuple(lakes),
         tuple(streams + shores), outline, wells=tuple(wells), levels=tuple(levels), incomplete=failed,
     )  # fmt: skip
     for result in answers.results:
@@ -117,9 +117,10 @@ def _footer(answers: Answers, case_name: str, failed: tuple[str, ...]) -> tuple[
         f"all {unknown} uncertain numbers are estimates: no level was fitted"
     )  # fmt: skip
     lines = [
-        f"Steady, one layer, no vertical resistance; drawn at {rates or 'no pumping'}; heights in m, {site.heights}; {how}.",
-        "Times are means and first arrival is earlier; a line is not a wall. Protection zones follow local codes and the "
-        "judgement of a licensed professional.",
+        f"Steady, one layer, no vertical resistance; drawn at {rates or 'no pumping'}; heights in m, {site.heights}; "
+        f"{how}.",
+        "Times are means and first arrival is earlier; a line is not a wall. Protection zones follow local codes and "
+        "the judgement of a licensed professional.",
         f"Coordinates {site.crs}, m. {'Period ' + site.period + '. ' if site.period else ''}Boundary conditions met to "
         f"{1000 * case.solution.boundary.max_misfit:.2g} mm. wellshed {__version__}, scenario {scenario.file.name} "
         f"{scenario.sha256[:12]}, seed {scenario.seed}.",

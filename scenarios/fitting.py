@@ -86,7 +86,7 @@ def natural(parameter: Parameter, model: Model, theta: float) -> float:
     """Value of a parameter as the scenario states it (a lake's stage, not its shift)."""
     value = float(np.exp(theta)) if parameter.log else theta
     if parameter.target == "shift" and parameter.name.startswith("lakes."):
-        return float(model.places.lines[parameter.index].stage) + value  # type: ignore[union-attr, arg-type]
+        return float(model.places.lines[parameter.index].stage) + value  # type: ignore[union-attr]
     return value
 
 

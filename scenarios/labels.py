@@ -1,6 +1,7 @@
 """Labels on a map that overlap neither each other nor marks nor the frame: greedy placement by bounding boxes."""
 
 from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
 from matplotlib.axes import Axes
@@ -38,7 +39,7 @@ class Labels:
         r = 0.5 * points * self.axes.figure.dpi / 72.0
         self.taken.append(Bbox.from_extents(px - r, py - r, px + r, py + r))
 
-    def beside(self, x: float, y: float, text: str, away: float, **style: object) -> Text | None:
+    def beside(self, x: float, y: float, text: str, away: float, **style: Any) -> Text | None:
         """A label ``away`` points from a mark at x, y; None where no free place was found."""
         width, height = self._size(text, style)
         px, py = self.axes.transData.transform((x, y))
@@ -55,11 +56,11 @@ class Labels:
                 )  # fmt: skip
         return None
 
-    def centred(self, x: float, y: float, text: str, **style: object) -> Text | None:
+    def centred(self, x: float, y: float, text: str, **style: Any) -> Text | None:
         """A label with its middle at x, y; None where that place is taken."""
         return self._turned(self.axes.transData.transform((x, y)), 0.0, self._size(text, style), text, style)
 
-    def along(self, line: np.ndarray, text: str, candidates: int = 15, **style: object) -> Text | None:
+    def along(self, line: np.ndarray, text: str, candidates: int = 15, **style: Any) -> Text | None:
         """A label on a line (n, 2), turned with it, at the first of some evenly spread places that is free."""
         if len(line) < 2:
             return None
@@ -80,7 +81,7 @@ class Labels:
         return None
 
     def _turned(
-        self, pixel: np.ndarray, angle: float, size: tuple[float, float], text: str, style: dict[str, object]
+        self, pixel: np.ndarray, angle: float, size: tuple[float, float], text: str, style: dict[str, Any]
     ) -> Text | None:
         """A label about a pixel, turned by an angle (deg); None where that place is taken."""
         c, s = abs(np.cos(np.radians(angle))), abs(np.sin(np.radians(angle)))
@@ -93,7 +94,7 @@ class Labels:
             path_effects=[withStroke(linewidth=2.2, foreground="white")], **style,
         )  # fmt: skip
 
-    def _size(self, text: str, style: dict[str, object]) -> tuple[float, float]:
+    def _size(self, text: str, style: dict[str, Any]) -> tuple[float, float]:
         """Width and height (pixels) of a label lying level."""
         probe = self.axes.text(0.0, 0.0, text, **style)
         box = probe.get_window_extent(self.renderer)

@@ -102,8 +102,8 @@ def _crossing(xy: np.ndarray, closed: bool) -> np.ndarray | None:
         met = shapely.intersection(segments[i], segments[j])
         neighbours = j == i + 1 or (closed and i == 0 and j == n - 1)
         if not neighbours or met.length > 0:  # neighbours share a vertex, but must not run back over each other
-            return shapely.get_coordinates(met)[-1]
-    return xy[0]
+            return np.asarray(shapely.get_coordinates(met)[-1])
+    return np.asarray(xy[0])
 
 
 def _from_file(request: FileLine, intake: Intake, path: Path_, at: Path_) -> tuple[np.ndarray, bool] | None:

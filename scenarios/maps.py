@@ -17,8 +17,9 @@ from .contours import contour_levels, contour_lines
 from .labels import Labels
 from .map_content import MapContent, ZoneMark
 
-STYLE: dict[str, Any] = {
-    "font.family": "DejaVu Sans", "font.size": 7.5, "axes.linewidth": 0.8, "svg.fonttype": "none", "hatch.linewidth": 0.35,
+STYLE: Any = {
+    "font.family": "DejaVu Sans", "font.size": 7.5, "axes.linewidth": 0.8, "svg.fonttype": "none",
+    "hatch.linewidth": 0.35,
     "xtick.direction": "in", "ytick.direction": "in", "xtick.top": True, "ytick.right": True, "path.simplify": True,
 }  # fmt: skip
 PALE = LinearSegmentedColormap.from_list("pale", ["#f6f1e3", "#e3ecdf", "#c4dce0", "#a5c8dd"])
@@ -37,9 +38,9 @@ def draw_map(content: MapContent) -> Figure:
         canvas = FigureCanvasAgg(figure)
         axes = _frame(figure, content.box, page)
         handles = _ground(axes, content)
-        labels = Labels(axes, canvas.get_renderer())
-        for mark in (*content.wells, *content.levels):
-            labels.keep_free(mark.x, mark.y, 7.0)
+        labels = Labels(axes, canvas.get_renderer())  # type: ignore[no-untyped-call]
+        for x, y in [(w.x, w.y) for w in content.wells] + [(v.x, v.y) for v in content.levels]:
+            labels.keep_free(x, y, 7.0)
         handles += _waters(axes, content)
         handles += _zones(axes, content)
         handles += _arrows(axes, content)
@@ -116,7 +117,7 @@ def _waters(axes: Axes, content: MapContent) -> list[Any]:
         axes.plot(*line.T, color=DEEP, lw=0.9, zorder=4)
     if content.streams and not content.reaches:
         handles.append(Line2D([], [], color=DEEP, lw=0.9, label="stream"))
-    kinds = {
+    kinds: dict[str, tuple[dict[str, Any], str]] = {
         "gains": ({"color": DEEP, "lw": 2.3, "ls": "-"}, "reach or shore that takes ground water"),
         "loses": ({"color": LOSS, "lw": 2.3, "ls": (0, (1.6, 1.0))}, "reach or shore that feeds the ground"),
     }
@@ -125,7 +126,7 @@ def _waters(axes: Axes, content: MapContent) -> list[Any]:
         for reach in found:
             axes.plot(*reach.line.T, zorder=5, solid_capstyle="butt", dash_capstyle="butt", **style)
         if found:
-            handles.append(Line2D([], [], label=words, **style))  # type: ignore[arg-type]
+            handles.append(Line2D([], [], label=words, **style))
     if content.outline is not None:
         axes.plot(*content.outline.T, color="#555555", lw=1.6, ls=(0, (9, 2, 2, 2)), zorder=4)
         handles.append(
@@ -177,7 +178,8 @@ def _arrows(axes: Axes, content: MapContent) -> list[Any]:
         back = line[max(len(line) - 4, 0)] if len(line) > 2 else line[0]
         axes.annotate(
             "", line[-1], back, zorder=5,
-            arrowprops={"arrowstyle": "-|>,head_width=0.16,head_length=0.34", "color": "#2f6b4f", "lw": 0.8, "shrinkA": 0, "shrinkB": 0},
+            arrowprops={"arrowstyle": "-|>,head_width=0.16,head_length=0.34", "color": "#2f6b4f", "lw": 0.8,
+                        "shrinkA": 0, "shrinkB": 0},
         )  # fmt: skip
     return (
         [Line2D([], [], color="#2f6b4f", lw=0.9, marker=">", ms=4, label="flow, all arrows one travel time")]
@@ -264,8 +266,8 @@ def _margin(figure: Figure, axes: Axes, content: MapContent, handles: list[Any],
     below = frame.y0 - 0.36 / page[1]
     columns = 3 if page[0] > 10.0 else 2
     figure.legend(
-        handles=handles, loc="upper left", bbox_to_anchor=(frame.x0 - 0.008, below), ncols=columns, frameon=False, fontsize=6.6,
-        handlelength=2.6, columnspacing=1.4, labelspacing=0.45, borderaxespad=0.0,
+        handles=handles, loc="upper left", bbox_to_anchor=(frame.x0 - 0.008, below), ncols=columns, frameon=False,
+        fontsize=6.6, handlelength=2.6, columnspacing=1.4, labelspacing=0.45, borderaxespad=0.0,
     )  # fmt: skip
     _scale_bar(figure, axes, content, frame.x1, frame.y1 + 0.3 / page[1], page)
     figure.text(

@@ -134,9 +134,8 @@ class Takes(Plain):
         if "sd" in raw:
             sd = Plain(self.dimension, above=0.0).read(raw["sd"], info, (*at, "sd"))
         source = raw.get("source")
-        return Stated(
-            value, unit, "known" if kind == "value" else kind, factor, sd, None if source is None else str(source)
-        )  # type: ignore[arg-type]
+        said: Any = "known" if kind == "value" else kind
+        return Stated(value, unit, said, factor, sd, None if source is None else str(source))
 
     def __get_pydantic_json_schema__(self, schema: CoreSchema, handler: GetJsonSchemaHandler) -> dict[str, Any]:
         number = super().__get_pydantic_json_schema__(schema, handler)

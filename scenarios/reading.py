@@ -131,7 +131,8 @@ def _beyond(block: Any) -> Beyond:
         )
     if block.reference is None:
         return Beyond(None, None, None, flow)
-    return Beyond(*block.reference.at, block.reference.head.at("beyond.reference.head"), flow)
+    x, y = block.reference.at
+    return Beyond(x, y, block.reference.head.at("beyond.reference.head"), flow)
 
 
 def _questions(block: Any, scenario: Scenario, intake: Intake) -> tuple[Question, ...]:

@@ -361,7 +361,7 @@ class _Frame(Block):
     """The far field; exactly one of `balance` and `reference`."""
     outline: OutlineBlock | None = None
     """An impermeable side."""
-    wells: WellsBlock = WellsBlock()
+    wells: WellsBlock = WellsBlock()  # type: ignore[call-arg]
     """Wells by name."""
     streams: dict[str, StreamBlock] = Field(default_factory=dict)
     """Streams by name."""

@@ -65,9 +65,9 @@ def _problems(error: ValidationError, model: type[BaseModel], data: Any, tree: T
                 tree.problem(ctx["rule"], text, path, ctx["help"], key=ctx["key"] or ctx["rule"] == "exactly-one")
             )
         else:
-            text, help = _words(kind, ctx, fault)
+            words, mend = _words(kind, ctx, fault)
             path = (*at, *loc)
-            found.append(tree.problem("form", f"{_dotted(path)}: {text}", path, help))
+            found.append(tree.problem("form", f"{_dotted(path)}: {words}", path, mend))
     return found
 
 
@@ -135,8 +135,7 @@ def _keys_at(annotation: Any, path: Path_, data: Any) -> list[str]:
         return _keys_at(inner, path[1:], data[path[0]] if isinstance(data, Mapping) and path[0] in data else None)
     arguments = [a for a in get_args(annotation) if a is not Ellipsis]
     if path and arguments:
-        below = data[path[0]] if (isinstance(data, Mapping) and path[0] in data) or isinstance(data, list) else None
-        return _keys_at(arguments[-1], path[1:], below)
+        return _keys_at(arguments[-1], path[1:], _at(data, path[:1]))
     return []
 
 

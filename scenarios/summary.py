@@ -10,11 +10,11 @@ from .scenario import Scenario
 
 
 def parameter_rows(scenario: Scenario, model: Model, fitted: Fitted) -> list[dict[str, Any]]:
-    """A row for every value that is not known exactly: fitted value, sd, 90% interval, prior, how much the data said."""
+    """A row for every value that is not known exactly: fitted value, sd, 90% interval, prior, what the data said."""
     rows = []
     for k, p in enumerate(model.parameters):
         prior_value = natural(p, model, p.mean)
-        prior = {"value": prior_value, "kind": "free" if np.isinf(p.sd) else "estimate"}
+        prior: dict[str, Any] = {"value": prior_value, "kind": "free" if np.isinf(p.sd) else "estimate"}
         if np.isfinite(p.sd):
             prior |= {"factor": float(np.exp(p.sd))} if p.log else {"sd": p.sd}
         if fitted.result is None:
@@ -52,8 +52,8 @@ def residual_rows(scenario: Scenario, model: Model, fitted: Fitted) -> list[dict
         rows.append(
             {"name": level.name, "kind": "level", "x": level.x, "y": level.y, "observed": level.head, "sd": level.sd,
              "computed": computed, "residual": level.head - computed,
-             "standardized": float(result.standardized[k]) if fit_known else None,  # type: ignore[union-attr, index]
-             "leverage": float(result.leverage[k]) if fit_known else None,  # type: ignore[union-attr, index]
+             "standardized": float(result.standardized[k]) if fit_known else None,  # type: ignore[union-attr]
+             "leverage": float(result.leverage[k]) if fit_known else None,  # type: ignore[union-attr]
              "left_out": level.left_out}
         )  # fmt: skip
     for i, g in enumerate(scenario.gaugings):

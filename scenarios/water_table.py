@@ -19,6 +19,7 @@ from .contours import contour_interval, contour_levels, contour_lines
 from .map_content import MapContent, Reach
 
 Floats = NDArray[np.float64]
+Place = tuple[float, float, float]  # x, y, head (m)
 GRID = 170  # cells along the longer side of the drawn area
 STILL = 1e-3  # of the largest strength on the lines: less exchange than this is none
 REACH = 3  # cells: a summit is higher than all ground within
@@ -60,8 +61,9 @@ def water_table(case: CaseAnswer, context: Context, interval: float | None) -> R
 
     def on_map(content: MapContent) -> MapContent:
         return replace(
-            content, x=x, y=y, head=head, interval=interval, arrows=tuple(arrows), reaches=tuple(r for _, _, r in reaches),
-            summits=tuple(_away_from_wells(case, summits, near)), basins=tuple(_away_from_wells(case, basins, near)),
+            content, x=x, y=y, head=head, interval=interval, arrows=tuple(arrows),
+            reaches=tuple(r for _, _, r in reaches), summits=tuple(_away_from_wells(case, summits, near)),
+            basins=tuple(_away_from_wells(case, basins, near)),
         )  # fmt: skip
 
     words = f"Water table {low:.2f} to {high:.2f} m, contours every {interval:g} m."
@@ -127,7 +129,7 @@ def reaches_of(case: CaseAnswer) -> list[tuple[str, float, Reach]]:
     return out
 
 
-def _extremes(case: CaseAnswer, x: Floats, y: Floats, head: Floats) -> tuple[list, list]:
+def _extremes(case: CaseAnswer, x: Floats, y: Floats, head: Floats) -> tuple[list[Place], list[Place]]:
     """Summits and basins: cells higher or lower than all cells within REACH of them, all on ground, off the waters.
 
     At a stream's end or beside a lake the head is prescribed; a highest or lowest place there is no news.
@@ -156,7 +158,7 @@ def _closed_line(line: Line) -> shapely.LineString:
     return shapely.LineString(np.concatenate([places, places[:1]]) if getattr(line, "closed", False) else places)
 
 
-def _away_from_wells(case: CaseAnswer, places: list, reach: float) -> list:
+def _away_from_wells(case: CaseAnswer, places: list[Place], reach: float) -> list[Place]:
     """Places that no well's own mark stands on."""
     wells = case.model.places.wells
     return [p for p in places if all(np.hypot(p[0] - w.x, p[1] - w.y) > reach for w in wells)]

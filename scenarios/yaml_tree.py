@@ -58,9 +58,11 @@ def read_tree(file: Path) -> Tree:
         node = yaml.compose(text, Loader=yaml.SafeLoader)
     except yaml.MarkedYAMLError as error:
         mark = error.problem_mark or error.context_mark
-        place = (None, None) if mark is None else (mark.line + 1, mark.column + 1)
+        line, column = (None, None) if mark is None else (mark.line + 1, mark.column + 1)
         hint = "indent with spaces, put text with ': ' or '#' in quotes"
-        raise InputError([Problem("yaml", f"not readable as YAML: {error.problem}", file, *place, hint)]) from None
+        raise InputError(
+            [Problem("yaml", f"not readable as YAML: {error.problem}", file, line, column, hint)]
+        ) from None
     except (yaml.YAMLError, RecursionError) as error:
         raise InputError([Problem("yaml", f"not readable as YAML: {error}", file)]) from None
     tree = Tree(None, file)

@@ -164,7 +164,8 @@ def _refuse_endless(places: Places, mesh: Mesh, bad: np.ndarray) -> None:
         z = mesh.points(np.array([0.0]))[0][p, 0]
         name = places.lines[int(mesh.edges.line[mesh.edge[p]])].name
         raise GeometryError(
-            f"{name!r}: two heads meet at the vertex x {z.real + places.origin[0]:.2f}, y {z.imag + places.origin[1]:.2f}"
+            f"{name!r}: two heads meet at the vertex x {z.real + places.origin[0]:.2f}, "
+            f"y {z.imag + places.origin[1]:.2f}"
         )
 
 

@@ -246,7 +246,7 @@ def _settle(model: _Model, start: _Point, sigma0: Floats, scale: float) -> _Poin
     point = replace(start, steps=0)
     if point.theta.size == 0:
         return point
-    whitener = scale * np.linalg.cholesky(sigma0) if sigma0.size else sigma0
+    whitener = np.asarray(scale * np.linalg.cholesky(sigma0) if sigma0.size else sigma0, dtype=float)
     precision = _precision(model.parameters)
     mean = np.array([p.mean for p in model.parameters])
     value = _objective(model, point.theta, point.computed, whitener)

@@ -2,7 +2,7 @@
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 
@@ -209,7 +209,7 @@ class _AquiferChange:
     porosity: float = 0.0
 
 
-def _change(aquifer: object, **parts: float) -> object:
+def _change(aquifer: object, **parts: float) -> Any:
     return _AquiferChange(**parts)
 
 

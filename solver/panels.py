@@ -110,7 +110,7 @@ def bounded_basis(kind: int) -> Floats:
 def densities(u: Floats, kind: int, bounded: bool) -> Floats:
     """Strength per length (m2/d) of each unit coefficient at u (k,): (k, ORDER + 1); infinite at u = 0 if singular."""
     if bounded:
-        return np.polynomial.legendre.legvander(2.0 * u - 1.0, ORDER)
+        return np.asarray(np.polynomial.legendre.legvander(2.0 * u - 1.0, ORDER), dtype=float)
     if kind == TIP:
         values = np.polynomial.legendre.legvander(u, 2 * ORDER)[:, ::2]
         return values / (2.0 * u)[:, None]

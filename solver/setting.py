@@ -2,6 +2,7 @@
 
 from collections.abc import Sequence
 from dataclasses import dataclass, fields, replace
+from typing import Any
 
 import numpy as np
 
@@ -126,7 +127,7 @@ def _same_shape(a: Element, b: Element) -> bool:
     return not isinstance(a, Stream) or (a.resistance is None) == (b.resistance is None)  # type: ignore[union-attr]
 
 
-def _equal(a: object, b: object) -> bool:
+def _equal(a: Any, b: Any) -> bool:
     if isinstance(a, tuple) and isinstance(b, tuple):
         return len(a) == len(b) and all(_equal(p, q) for p, q in zip(a, b, strict=True))
     return bool(np.array_equal(a, b)) if isinstance(a, np.ndarray) else a == b

@@ -128,9 +128,10 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
     """Follow one particle from x, y (local m) where the potential is phi (m3/d), sign +1 with the flow, -1 against it.
 
     medium: conductivity, full thickness, porosity. marks (k,): ascending times (d) whose positions go into
-    at_marks (k, 2); points (m, 3): x, y, t of the start and of every step, and in between on long ones; share (l + 1,): of the water that
-    arrives at the start, what each line gave (the last one: what is still on the way at the end), followed against
-    the flow only. Returns the number of points, the ending, the well or line it names (-1 none), and steps tried.
+    at_marks (k, 2); points (m, 3): x, y, t of the start and of every step, and in between on long ones;
+    share (l + 1,): of the water that arrives at the start, what each line gave (the last one: what is still on the
+    way at the end), followed against the flow only. Returns the number of points, the ending, the well or line it
+    names (-1 none), and steps tried.
     """
     conductivity, full, porosity = medium[0], medium[1], medium[2]
     rate = np.empty((7, 3))

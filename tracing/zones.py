@@ -8,6 +8,7 @@ border is the front of their ends and, at every parting, the two pathlines on bo
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import shapely
@@ -178,7 +179,7 @@ def _merged(angles: Floats, paths: Pathlines, between: Floats, more: Pathlines) 
     every = np.concatenate([angles, between])
     order = np.argsort(every, kind="stable")
     points = paths.points + more.points
-    both = [np.concatenate(pair)[order] for pair in (
+    both: list[Any] = [np.concatenate(pair)[order] for pair in (
         (paths.endings, more.endings), (paths.named, more.named), (paths.at_marks, more.at_marks),
         (paths.share, more.share), (paths.tried, more.tried),
     )]  # fmt: skip

@@ -30,7 +30,8 @@ class Options(Block):
 def problems(options: Options, scenario: Scenario) -> list[Fault]:
     """Faults of the options against the scenario."""
     found = unknown_cases(options.cases, scenario)
-    pumping, injecting = set(), set()
+    pumping: set[str] = set()
+    injecting: set[str] = set()
     for well in _wells(options, scenario):
         (injecting if well.rate.path.endswith(".injects") else pumping).add(well.name)
     for i, name in enumerate(options.wells):

@@ -16,9 +16,8 @@ import tempfile
 import time
 from pathlib import Path
 
-import numba
 import numpy as np
-from rows import alternately, conditions, row
+from rows import alternately, conditions, one_thread, row
 from wellshed import Aquifer
 from wellshed.elements.field_arrays import make_panels, panel_moments
 from wellshed.elements.flow_field import superpose
@@ -147,7 +146,7 @@ def main():
     parser.add_argument("--panels", type=int, default=200)
     parser.add_argument("--repeats", type=int, default=9)
     options = parser.parse_args()
-    numba.config.NUMBA_NUM_THREADS = 1
+    one_thread()
     rng = np.random.default_rng(1)
     x, y = rng.uniform(0, SIDE, options.points), rng.uniform(0, SIDE, options.points)
     order = along_z_order(x, y)

@@ -13,11 +13,10 @@ import argparse
 import sys
 import time
 
-import numba
 import numpy as np
 import shapely
 from bench_kernels import SIDE, network
-from rows import best_of, conditions, row
+from rows import best_of, conditions, one_thread, row
 from scipy.integrate import solve_ivp
 from wellshed import Aquifer, PumpingWell, RegionalFlow, Stream, trace
 from wellshed.elements.field_arrays import panel_moments
@@ -216,7 +215,7 @@ def main():
     parser.add_argument("--particles", type=int, default=128)
     parser.add_argument("--repeats", type=int, default=3)
     options = parser.parse_args()
-    numba.config.NUMBA_NUM_THREADS = 1
+    one_thread()
     conditions("pathlines", threads_used=1)
     for kind in ("back from wells", "back from wells and anywhere", "forward from anywhere"):
         compare(kind, options.particles, options.repeats)

@@ -3,6 +3,7 @@
 import json
 import os
 import platform
+import sys
 import time
 from pathlib import Path
 
@@ -12,6 +13,16 @@ import numpy as np
 def row(benchmark, **values):
     """Print one row."""
     print(json.dumps({"benchmark": benchmark, **values}, default=float), flush=True)
+
+
+def one_thread():
+    """Start this script anew with every library on one thread: the number is read when a library loads.
+
+    CPU time of one thread is hardly disturbed by other programs; that of threads waiting for each other is.
+    """
+    names = ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS", "NUMBA_NUM_THREADS")
+    if any(os.environ.get(name) != "1" for name in names):
+        os.execve(sys.executable, [sys.executable, *sys.argv], {**os.environ, **dict.fromkeys(names, "1")})
 
 
 def conditions(benchmark, **more):

@@ -11,7 +11,11 @@ from wellshed.scenarios.fitting import fit_scenario
 from wellshed.scenarios.reading import load
 from wellshed.scenarios.scenario import Case, Change
 
-BED = "  Elm Brook:\n    shift: {estimate: 0.1, sd: 0.2}\n    bed: {resistance: {estimate: 5 d, factor: 2}}\n    width: 12\n"
+BED = """  Elm Brook:
+    shift: {estimate: 0.1, sd: 0.2}
+    bed: {resistance: {estimate: 5 d, factor: 2}}
+    width: 12
+"""
 FLOW = """beyond:
   reference: {at: [60, 60], head: {estimate: 62.4, sd: 0.3}}
   flow: {gradient: {estimate: 0.002, factor: 1.5}, towards: {estimate: 95 deg, sd: 15 deg}, at: [500, 400]}
