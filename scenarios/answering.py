@@ -9,6 +9,8 @@ import numpy as np
 from ..elements.flow_field import FlowField
 from ..solver.balance import BEYOND
 from ..solver.boundary import Solution
+from ..solver.fit import FitResult
+from ..solver.prediction import leave_one_out
 from .building import Model, build
 from .cases import CaseAnswer, solve_case
 from .context import BASE, Check, Context, Result
@@ -63,6 +65,7 @@ class Answers:
                     "misfit": result.own_misfit, "degrees_of_freedom": result.own_dof,
                     "probability": result.own_probability,
                 },
+                "leave_one_out": None if result is None else _foretold(result, len(self.model.readings.head)),
                 "warnings": list(self.fitted.warnings),
             },
             "boundary": {
@@ -82,6 +85,15 @@ class Answers:
             "checks": [{"name": c.name, "passed": c.passed, "value": c.value, "bound": c.bound} for c in self.checks],
             "notes": list(self.notes),
         }  # fmt: skip
+
+
+def _foretold(result: FitResult, n_levels: int) -> dict[str, float] | None:
+    """Root mean square error (m) of foretelling each level from all others, with and without the error model."""
+    if n_levels < 2:
+        return None
+    found = leave_one_out(result)
+    rms = [float(np.sqrt(np.mean(np.square(e[:n_levels])))) for e in (found.field, found.predicted)]
+    return {"field_rmse": rms[0], "predicted_rmse": rms[1]}
 
 
 def answer(scenario: Scenario, *, progress: Callable[[str], None] | None = None) -> Answers:
