@@ -1,5 +1,6 @@
 """One map on one page: true to scale, readable in grey and for colour-blind eyes, legend outside the frame."""
 
+from dataclasses import dataclass
 from typing import Any
 
 import matplotlib as mpl
@@ -26,51 +27,73 @@ PALE = LinearSegmentedColormap.from_list("pale", ["#f6f1e3", "#e3ecdf", "#c4dce0
 WATER, DEEP, LOSS, INK = "#d6e6f2", "#1b4f7a", "#a0522d", "#222222"
 TIMES = [(0, (5, 2)), (0, (5, 1.5, 1, 1.5)), (0, (1.2, 1.4)), (0, (8, 2, 1, 1, 1, 2))]
 LANDSCAPE, PORTRAIT = (11.69, 8.27), (8.27, 11.69)  # A4, inches
-TOP, BOTTOM, SIDE = 0.62, 2.25, 0.72  # inches round the map
+TOP, SIDE = 0.62, 0.72  # inches above and beside the map
+ROW, LINE = 0.14, 0.113  # inches for a row of the legend and a line of the footer
 
 
 def draw_map(content: MapContent) -> Figure:
     """The map of some content as a figure; nothing global is touched."""
     with mpl.rc_context(STYLE):
-        page = max((LANDSCAPE, PORTRAIT), key=lambda p: _inches_per_m(content.box, p))
-        page = _trimmed(content.box, page)
-        figure = Figure(figsize=page, dpi=200)
+        figure = Figure(dpi=200)
         canvas = FigureCanvasAgg(figure)
-        axes = _frame(figure, content.box, page)
+        axes = figure.add_axes((0.1, 0.3, 0.8, 0.6))
         handles = _ground(axes, content)
-        labels = Labels(axes, canvas.get_renderer())  # type: ignore[no-untyped-call]
-        for x, y in [(w.x, w.y) for w in content.wells] + [(v.x, v.y) for v in content.levels]:
-            labels.keep_free(x, y, 7.0)
         handles += _waters(axes, content)
         handles += _zones(axes, content)
         handles += _arrows(axes, content)
         handles += _marks(axes, content)
+        # only now is it known how much room the legend takes; labels are placed on the finished frame
+        page = _page(content, len(handles))
+        figure.set_size_inches(page.width, page.height)
+        _frame(axes, content.box, page)
+        labels = Labels(axes, canvas.get_renderer())  # type: ignore[no-untyped-call]
+        for x, y in [(w.x, w.y) for w in content.wells] + [(v.x, v.y) for v in content.levels]:
+            labels.keep_free(x, y, 7.0)
         _names(labels, content)
         _margin(figure, axes, content, handles, page)
     return figure
 
 
-def _inches_per_m(box: tuple[float, float, float, float], page: tuple[float, float]) -> float:
-    """The largest scale at which the box fits into what the margins of a page leave."""
-    x0, x1, y0, y1 = box
-    return min((page[0] - 2 * SIDE) / (x1 - x0), (page[1] - TOP - BOTTOM) / (y1 - y0))
+@dataclass(frozen=True)
+class Page:
+    """Sizes in inches: the page, what stands below the map; legend columns; scale (inches per m)."""
+
+    width: float
+    height: float
+    bottom: float
+    columns: int
+    scale: float
 
 
-def _trimmed(box: tuple[float, float, float, float], page: tuple[float, float]) -> tuple[float, float]:
-    """The page without what would stay empty, never narrower than an upright A4 (the legend's width)."""
-    inches = _inches_per_m(box, page)
-    width = max(inches * (box[1] - box[0]) + 2 * SIDE, PORTRAIT[0])
-    return min(width, page[0]), min(inches * (box[3] - box[2]) + TOP + BOTTOM, page[1])
+def _page(content: MapContent, n_handles: int) -> Page:
+    """The page (A4 less what would stay empty) at which the map comes out largest.
+
+    Never narrower than an upright A4, the legend's width.
+    """
+    x0, x1, y0, y1 = content.box
+    found = []
+    for width, height in (LANDSCAPE, PORTRAIT):
+        columns = 3 if width > 10.0 else 2
+        bottom = 0.42 + ROW * -(-n_handles // columns) + 0.18 + LINE * len(content.footer) + 0.14
+        scale = min((width - 2 * SIDE) / (x1 - x0), (height - TOP - bottom) / (y1 - y0))
+        trimmed = max(scale * (x1 - x0) + 2 * SIDE, PORTRAIT[0])
+        if trimmed <= 10.0 < width:  # no room for three columns
+            columns = 2
+            bottom = 0.42 + ROW * -(-n_handles // columns) + 0.18 + LINE * len(content.footer) + 0.14
+            scale = min((width - 2 * SIDE) / (x1 - x0), (height - TOP - bottom) / (y1 - y0))
+            trimmed = max(scale * (x1 - x0) + 2 * SIDE, PORTRAIT[0])
+        full = scale * (y1 - y0) + TOP + bottom
+        found.append(Page(min(trimmed, width), min(full, height), bottom, columns, scale))
+    return max(found, key=lambda page: page.scale)
 
 
-def _frame(figure: Figure, box: tuple[float, float, float, float], page: tuple[float, float]) -> Axes:
+def _frame(axes: Axes, box: tuple[float, float, float, float], page: Page) -> None:
     """Axes of equal scale that fill what the margins leave, centred across."""
     x0, x1, y0, y1 = box
-    inches = _inches_per_m(box, page)
-    width, height = inches * (x1 - x0), inches * (y1 - y0)
-    left = 0.5 * (page[0] - width)
-    bottom = page[1] - TOP - height
-    axes = figure.add_axes((left / page[0], bottom / page[1], width / page[0], height / page[1]))
+    width, height = page.scale * (x1 - x0), page.scale * (y1 - y0)
+    left = 0.5 * (page.width - width)
+    low = page.height - TOP - height
+    axes.set_position((left / page.width, low / page.height, width / page.width, height / page.height))
     axes.set_xlim(x0, x1)
     axes.set_ylim(y0, y1)
     axes.set_aspect("equal")
@@ -83,7 +106,6 @@ def _frame(figure: Figure, box: tuple[float, float, float, float], page: tuple[f
         label.set_verticalalignment("center")
     axes.set_xlabel("x (m)", labelpad=1)
     axes.set_ylabel("y (m)", labelpad=3)
-    return axes
 
 
 def _round_step(value: float) -> float:
@@ -258,21 +280,20 @@ def _names(labels: Labels, content: MapContent) -> None:
         labels.beside(x, y, f"{head:.2f}", 4.0, fontsize=5.8, color="#5b2a86", zorder=12)
 
 
-def _margin(figure: Figure, axes: Axes, content: MapContent, handles: list[Any], page: tuple[float, float]) -> None:
+def _margin(figure: Figure, axes: Axes, content: MapContent, handles: list[Any], page: Page) -> None:
     """Title above; legend, scale bar, north arrow and footer below the frame."""
     frame = axes.get_position()
-    figure.text(frame.x0, 1 - 0.26 / page[1], content.title, fontsize=12, fontweight="bold", va="top")
-    figure.text(frame.x0, 1 - 0.46 / page[1], content.case, fontsize=8, va="top", color="#444444")
-    below = frame.y0 - 0.36 / page[1]
-    columns = 3 if page[0] > 10.0 else 2
+    figure.text(frame.x0, 1 - 0.26 / page.height, content.title, fontsize=12, fontweight="bold", va="top")
+    figure.text(frame.x0, 1 - 0.46 / page.height, content.case, fontsize=8, va="top", color="#444444")
+    below = frame.y0 - 0.36 / page.height
     figure.legend(
-        handles=handles, loc="upper left", bbox_to_anchor=(frame.x0 - 0.008, below), ncols=columns, frameon=False,
-        fontsize=6.6, handlelength=2.6, columnspacing=1.4, labelspacing=0.45, borderaxespad=0.0,
+        handles=handles, loc="upper left", bbox_to_anchor=(frame.x0 - 0.008, below), ncols=page.columns, frameon=False,
+        fontsize=6.6, handlelength=3.4, columnspacing=1.4, labelspacing=0.45, borderaxespad=0.0,
     )  # fmt: skip
-    _scale_bar(figure, axes, content, frame.x1, frame.y1 + 0.3 / page[1], page)
+    _scale_bar(figure, axes, content, frame.x1, frame.y1 + 0.3 / page.height, page)
     figure.text(
-        0.5 * SIDE / page[0],
-        0.14 / page[1],
+        0.5 * SIDE / page.width,
+        0.14 / page.height,
         "\n".join(content.footer),
         fontsize=5.8,
         va="bottom",
@@ -286,9 +307,7 @@ def _margin(figure: Figure, axes: Axes, content: MapContent, handles: list[Any],
         )  # fmt: skip
 
 
-def _scale_bar(
-    figure: Figure, axes: Axes, content: MapContent, right: float, y: float, page: tuple[float, float]
-) -> None:
+def _scale_bar(figure: Figure, axes: Axes, content: MapContent, right: float, y: float, page: Page) -> None:
     x0, x1, _, _ = content.box
     per_m = axes.get_position().width / (x1 - x0)
     length = _round_step(0.2 * (x1 - x0))
@@ -297,9 +316,9 @@ def _scale_bar(
         a, b = left + k * length * per_m / 4, left + (k + 1) * length * per_m / 4
         figure.add_artist(Line2D([a, b], [y, y], color=INK if k % 2 == 0 else "#bbbbbb", lw=4, solid_capstyle="butt"))
     text = f"{length / 1000:g} km" if length >= 1000 else f"{length:g} m"
-    figure.text(left, y - 0.14 / page[1], "0", fontsize=6.5, ha="center", va="top")
-    figure.text(right, y - 0.14 / page[1], text, fontsize=6.5, ha="right", va="top")
-    north = left - 0.35 / page[0]
-    figure.add_artist(Line2D([north, north], [y - 0.22 / page[1], y + 0.1 / page[1]], color=INK, lw=1.0))
-    figure.add_artist(Line2D([north], [y + 0.1 / page[1]], color=INK, marker="^", ms=5))
-    figure.text(north - 0.09 / page[0], y - 0.05 / page[1], "grid\nnorth", fontsize=5.5, ha="right", va="center")
+    figure.text(left, y - 0.14 / page.height, "0", fontsize=6.5, ha="center", va="top")
+    figure.text(right, y - 0.14 / page.height, text, fontsize=6.5, ha="right", va="top")
+    north = left - 0.35 / page.width
+    figure.add_artist(Line2D([north, north], [y - 0.22 / page.height, y + 0.1 / page.height], color=INK, lw=1.0))
+    figure.add_artist(Line2D([north], [y + 0.1 / page.height], color=INK, marker="^", ms=5))
+    figure.text(north - 0.09 / page.width, y - 0.05 / page.height, "grid\nnorth", fontsize=5.5, ha="right", va="center")
