@@ -283,7 +283,10 @@ def _names(labels: Labels, content: MapContent) -> None:
 def _margin(figure: Figure, axes: Axes, content: MapContent, handles: list[Any], page: Page) -> None:
     """Title above; legend, scale bar, north arrow and footer below the frame."""
     frame = axes.get_position()
-    figure.text(frame.x0, 1 - 0.26 / page.height, content.title, fontsize=12, fontweight="bold", va="top")
+    title = figure.text(frame.x0, 1 - 0.26 / page.height, content.title, fontsize=12, fontweight="bold", va="top")
+    width = title.get_window_extent(figure.canvas.get_renderer()).width  # type: ignore[attr-defined]
+    room = figure.bbox.width * (0.98 * frame.x1 - frame.x0 - 0.2 * frame.width) - 0.7 * figure.dpi  # bar and arrow
+    title.set_fontsize(12 * min(1.0, room / width))
     figure.text(frame.x0, 1 - 0.46 / page.height, content.case, fontsize=8, va="top", color="#444444")
     below = frame.y0 - 0.36 / page.height
     figure.legend(
