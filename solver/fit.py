@@ -25,6 +25,7 @@ from .system import System
 PRIOR_READINGS = 4.0  # weight of "the stated errors are right" against the residuals when the scale is estimated
 MOST_STEPS = 40
 LEAST_SCALE = 0.1
+ENOUGH = 0.25  # part of the promised fall that a step must bring (Armijo 1966); any fall at all lets steps swing
 
 
 @dataclass(frozen=True)
@@ -271,7 +272,7 @@ def _settle(model: _Model, start: _Point, sigma0: Floats, scale: float) -> _Poin
                 trial = _objective(model, theta, computed, whitener)
             except (NotSolvedError, ValueError):
                 trial = np.inf
-            if trial < value:
+            if trial < value - ENOUGH * share * promised:
                 break
             share *= 0.5
             if share < 1e-4:
