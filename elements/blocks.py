@@ -10,7 +10,7 @@ from concurrent.futures import ThreadPoolExecutor
 
 import numba
 
-SMALL = 48  # points: fewer are not worth a thread
+SMALL = 256  # points: fewer are not worth a thread (starting some costs as much as evaluating about a hundred)
 PER_THREAD = 4  # blocks for each thread, so that none waits long for the slowest
 
 

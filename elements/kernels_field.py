@@ -67,8 +67,8 @@ def near_discharge(x, y, p, panel, kind, n_coef, coef, work):
 
 
 @kernel
-def rings_at(x, y, ring, ring_start, ring_moment, edge, log_scale, want_potential):
-    """Potential (m3/d, if wanted) and discharge (m2/d) of all recharge rings."""
+def rings_at(x, y, ring, ring_start, ring_moment, edge, log_scale):
+    """Potential (m3/d) and discharge (m2/d) of all recharge rings; what the caller drops, the compiler leaves out."""
     phi = 0.0
     qx = 0.0
     qy = 0.0
@@ -89,13 +89,11 @@ def rings_at(x, y, ring, ring_start, ring_moment, edge, log_scale, want_potentia
             for k in range(far_terms(z2) - 1, 0, -1):
                 m = ring_moment[r, k]
                 total = (total + m) * t
-                if want_potential:
-                    logs = (logs + m / k) * t
+                logs = (logs + m / k) * t
             w = rate * inv * (ring_moment[r, 0] + total)
             qx += w.real
             qy -= w.imag
-            if want_potential:
-                phi -= rate * (ring[r, 4] * (0.5 * np.log(d2) - log_scale) - logs.real)
+            phi -= rate * (ring[r, 4] * (0.5 * np.log(d2) - log_scale) - logs.real)
             continue
         first = ring_start[r]
         log1 = log_distance2(x, y, edge[first, 0], edge[first, 1])
@@ -156,7 +154,7 @@ def potential_at(x, y, f, work):
         else:
             re, im = near_panel_potential(x, y, p, panel, kind, n_coef, coef, u[5], work)
             phi += re if vortex[p] == 0 else im + jump[p] * constant_doublet(x, y, panel, p)
-    area, _, _ = rings_at(x, y, f.ring, f.ring_start, f.ring_moment, f.edge, u[5], True)
+    area, _, _ = rings_at(x, y, f.ring, f.ring_start, f.ring_moment, f.edge, u[5])
     return phi + area
 
 
@@ -195,7 +193,7 @@ def discharge_at(x, y, f, work):
         else:  # times -i: W = b - i a
             qx += b
             qy += a
-    _, a, b = rings_at(x, y, f.ring, f.ring_start, f.ring_moment, f.edge, u[5], False)
+    _, a, b = rings_at(x, y, f.ring, f.ring_start, f.ring_moment, f.edge, u[5])
     return qx + a, qy + b
 
 

@@ -177,7 +177,7 @@ def _root(tau, kind):
 
 @kernel
 def _ends(one_minus_tau, zeta, kind, j):
-    """Z_j - 1, Z_j + 1 and w_j zeta of root j, the first without cancellation near u = 1."""
+    """Z_j - 1, Z_j + 1 and w_j zeta of root j (unused for kind 0), the first without cancellation near u = 1."""
     if kind == 0:
         return divide(-one_minus_tau, zeta + 1.0), zeta + 1.0, zeta
     if j == 0:
@@ -222,7 +222,7 @@ def near_potentials(kind, tau, one_minus_tau, n_coef, q, out):
     for n in range(n_coef):
         out[n] = 0.0
     if kind == 0:
-        zm1, zp1, wz = _ends(one_minus_tau, zeta, kind, 0)
+        zm1, zp1, wz = _ends(one_minus_tau, zeta, kind, kind)
         legendre_q(zm1, zp1, 2 * n_coef - 1, q)
         out[0] = complex(_z_log_z(zp1) - _z_log_z(zm1) - 2.0, (2.0 * wz * q[0]).imag)
         for n in range(1, n_coef):
@@ -244,7 +244,7 @@ def near_derivatives(kind, tau, one_minus_tau, n_coef, q, out):
     one_minus_tau = _off_vertex(one_minus_tau)
     zeta = _root(tau, kind)
     if kind == 0:
-        zm1, zp1, _ = _ends(one_minus_tau, zeta, kind, 0)
+        zm1, zp1, _ = _ends(one_minus_tau, zeta, kind, kind)
         legendre_q(zm1, zp1, 2 * n_coef - 2, q)
         inverse = divide(1.0 + 0.0j, zeta)
         for n in range(n_coef):

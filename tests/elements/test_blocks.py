@@ -13,7 +13,7 @@ from wellshed.tracing.pathlines import trace
 
 
 @pytest.mark.parametrize("threads", [1, 2, 5])
-@pytest.mark.parametrize("n", [0, 1, 48, 49, 1000])
+@pytest.mark.parametrize("n", [0, 1, 256, 257, 1000])
 def test_every_point_is_worked_on_once(monkeypatch, threads, n):
     monkeypatch.setattr(numba.config, "NUMBA_NUM_THREADS", threads)
     seen = np.zeros(n, dtype=int)
