@@ -12,11 +12,12 @@ from ..solver.boundary import Solution
 from ..solver.fit import FitResult
 from ..solver.prediction import leave_one_out
 from .building import Model, build
-from .cases import CaseAnswer, solve_case
+from .cases import CaseAnswer, fitted_scenario, solve_case
 from .context import BASE, Check, Context, Result
 from .fitting import Fitted, fit_scenario
 from .messages import InputError, Problem
 from .questions import question_module
+from .routing import least_flow
 from .scenario import Scenario
 from .summary import parameter_rows, residual_rows
 
@@ -116,6 +117,11 @@ def answer(scenario: Scenario, *, progress: Callable[[str], None] | None = None)
     for question in scenario.questions:
         results += question_module(question.kind).answer(question.options, context)
     checks = [check for case in cases.values() for check in _field_checks(case)]
+    known = {
+        BASE: fitted_scenario(scenario, model, fitted),
+        **{c.name: c.scenario for c in cases.values() if c.name != BASE},
+    }
+    checks += [check for name, case in cases.items() for check in _stream_checks(known[name], case)]
     checks += [check for result in results for check in result.checks]
     notes = (*scenario.notes, *model.notes, *fitted.solution.boundary.notes)
     return Answers(scenario, model, fitted, cases, tuple(results), tuple(checks), notes)
@@ -143,6 +149,18 @@ def _field_checks(case: CaseAnswer) -> list[Check]:
         Check(f"flow round the site agrees with the balance of {case.name} (share)", round_open <= ROUND_CLOSED,
               round_open, ROUND_CLOSED),
     ]  # fmt: skip
+
+
+def _stream_checks(scenario: Scenario, case: CaseAnswer) -> list[Check]:
+    """No stream whose source is stated gives the ground more water than it carries."""
+    out = []
+    for stream in scenario.streams:
+        found = least_flow(scenario, case.solution, stream.name)
+        if found is not None:
+            flow, share = found
+            where = f"{stream.name} carries water all along in {case.name} (m3/d at {share:.2f} of its length)"
+            out.append(Check(where, flow >= 0.0, flow, 0.0))
+    return out
 
 
 def round_closure(solution: Solution) -> float:

@@ -13,6 +13,7 @@ from ..elements.well import PumpingWell
 from ..solver.fit import Readings
 from ..solver.inputs import Inputs, Parameter, Regional, Target
 from ..solver.setting import Element, Places, sort_elements
+from .routing import course, reaches_above
 from .scenario import Scenario, StreamInput, Value
 
 OUTLINE = "outline"
@@ -188,14 +189,17 @@ def _readings(scenario: Scenario, places: Places, parameters: tuple[Parameter, .
     used = [level for level in scenario.levels if level.left_out is None]
     line = {element.name: k for k, element in enumerate(places.lines)}
     streams = {s.name: s for s in scenario.streams}
-    start, given, distance = [], [], []
+    start, given, distance, above = [], [], [], []
     for g in scenario.gaugings:
-        s = streams[g.stream]
-        length = float(np.hypot(np.diff(s.x), np.diff(s.y)).sum())
+        length = float(course(streams[g.stream]).length)
+        reaches = reaches_above(streams, g.stream, g.at * length)
         distance.append(g.at * length)
-        index = [k for k, p in enumerate(parameters) if p.target == "starts_with" and p.index == line[g.stream]]
+        above.append(tuple((line[name], far) for name, far in reaches[1:]))
+        feeding = {line[name]: streams[name].starts_with for name, _ in reaches}
+        index = [k for k, p in enumerate(parameters) if p.target == "starts_with" and p.index in feeding]
+        fitted = {parameters[k].index for k in index}
         start.append(tuple(index))
-        given.append(0.0 if index or s.starts_with is None else s.starts_with.value)
+        given.append(sum(s.value for k, s in feeding.items() if s is not None and k not in fitted))
     return Readings(
         tuple(level.name for level in used),
         np.array([level.x for level in used]),
@@ -207,6 +211,7 @@ def _readings(scenario: Scenario, places: Places, parameters: tuple[Parameter, .
         tuple(g.name for g in scenario.gaugings),
         tuple(line[g.stream] for g in scenario.gaugings),
         tuple(distance),
+        tuple(above),
         tuple(start),
         tuple(given),
         tuple(g.flow for g in scenario.gaugings),

@@ -75,8 +75,24 @@ def _references(scenario: Scenario, intake: Intake) -> None:
                 ("streams", s.name, "into"),
                 meant(s.into, [n for n in streams if n != s.name], "streams"),
             )
-        elif any(g.stream == s.into for g in scenario.gaugings):
-            intake.note(f"gaugings of {s.into} are taken without what {s.name} brings")
+        elif _runs_round(scenario, s.name):
+            intake.error(
+                "stream-circle",
+                f"stream {s.name} flows back into itself: {s.into} leads to it",
+                ("streams", s.name, "into"),
+            )
+
+
+def _runs_round(scenario: Scenario, name: str) -> bool:
+    """Whether the streams that a stream flows into lead back to it."""
+    into = {s.name: s.into for s in scenario.streams}
+    below, seen = into[name], set()
+    while below in into and below not in seen:
+        if below == name:
+            return True
+        seen.add(below)
+        below = into[below]
+    return False
 
 
 def _far_field(scenario: Scenario, intake: Intake) -> None:

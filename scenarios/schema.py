@@ -254,16 +254,16 @@ class StreamBlock(Block):
     bed: BedBlock | None = None
     """Left out = full contact with the aquifer."""
     starts_with: Annotated[Stated, Takes("rate", least=0.0)] | None = None
-    """Flow at the source; left out = never dry."""
+    """Flow at the source. A stream that would lose more than it carries fails a check; left out = never dry."""
     into: str | None = None
-    """The stream that it flows into."""
+    """The stream that it flows into, at the place nearest to its mouth."""
 
 
 class LakeBlock(Block):
     """A lake."""
 
     edge: Line
-    """A ring with water inside, or an open line of shore."""
+    """A ring with water inside, or an open line of shore, which gives and takes water on both of its sides."""
     stage: Elevation
     """Water level."""
     land: Literal["inside"] | None = None

@@ -42,6 +42,7 @@ class Readings:
     gauging_names: tuple[str, ...] = ()
     gauging_line: tuple[int, ...] = ()
     gauging_distance: tuple[float, ...] = ()  # m from the source
+    gauging_above: tuple[tuple[tuple[int, float], ...], ...] = ()  # tributaries above: line and distance of each
     gauging_start: tuple[tuple[int, ...], ...] = ()  # indices of parameters added to the gain (starts_with)
     gauging_given: tuple[float, ...] = ()  # m3/d known to enter at the source
     gauging_flow: tuple[float, ...] = ()  # m3/d
@@ -165,8 +166,10 @@ class _Model:
 def make_model(system: System, inputs: Inputs, parameters: Sequence[Parameter], readings: Readings) -> _Model:
     """What the fit evaluates, with all matrices that do not depend on the parameters."""
     probe = make_probe(system, readings.x, readings.y)
-    pairs = zip(readings.gauging_line, readings.gauging_distance, strict=True)
-    takes = [upstream_take(system.mesh, line, distance) for line, distance in pairs]
+    own = list(zip(readings.gauging_line, readings.gauging_distance, strict=True))
+    above = readings.gauging_above or ((),) * len(own)
+    reaches = [[one, *others] for one, others in zip(own, above, strict=True)]
+    takes = [np.sum([upstream_take(system.mesh, *reach) for reach in all_of], axis=0) for all_of in reaches]
     empty = np.zeros((0, system.mesh.n_unknown + 1))
     return _Model(system, inputs, tuple(parameters), readings, probe, np.array(takes) if takes else empty)
 

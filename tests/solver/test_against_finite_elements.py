@@ -1,4 +1,4 @@
-"""Whole sites against quadratic finite elements (tests/fem.py): heads to 3 mm, near stream tips to 20 mm, flows to 0.2%.
+"""Closed sites against quadratic finite elements (tests/fem.py): heads to 3 mm, near stream tips 20 mm, flows 0.2%.
 
 Every case is closed: an island in a lake of known head, or a basin with an impermeable rim, so that both see the same
 problem and no far field enters.
