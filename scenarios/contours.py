@@ -19,7 +19,7 @@ def contour_interval(low: float, high: float) -> float:
     power = int(np.floor(np.log10(span)))
     candidates = [float(f"{f}e{n}") for n in range(power - 2, power + 1) for f in (1, 2, 5)]
     steps = [span / c for c in candidates]
-    away = [max(5.0 - s, s - 8.0, 0.0) / s for s in steps]
+    away = [max(5.0 / s, s / 8.0, 1.0) for s in steps]
     # of several that fit, the one with fewer lines
     return min(zip(away, steps, candidates, strict=True))[2]
 
