@@ -38,7 +38,7 @@ class Cells:
 def make_cells(places: Places, x: Floats, y: Floats, patch: float) -> Cells:
     """Cells over the levels x, y (m) and the lines, on land and inside outlines; at most MOST_CELLS of them.
 
-    Side: half a patch, or as much more as the size of the site asks for (R then holds for cell means).
+    Side: a quarter of a patch, or as much more as the size of the site asks for (R then holds for cell means).
     """
     xs = np.concatenate([x, *(line.x for line in places.lines)])
     ys = np.concatenate([y, *(line.y for line in places.lines)])
@@ -46,7 +46,7 @@ def make_cells(places: Places, x: Floats, y: Floats, patch: float) -> Cells:
     limits = [r for r in rings if isinstance(r, Outline) or (isinstance(r, LakeEdge) and r.land_inside)]
     margin = 0.0 if limits else max(2.0 * patch, 0.1 * max(float(np.ptp(xs)), float(np.ptp(ys))))
     x0, x1, y0, y1 = xs.min() - margin, xs.max() + margin, ys.min() - margin, ys.max() + margin
-    side = max(0.5 * patch, float(np.sqrt((x1 - x0) * (y1 - y0) / MOST_CELLS)))
+    side = max(0.25 * patch, float(np.sqrt((x1 - x0) * (y1 - y0) / MOST_CELLS)))
     nx, ny = max(1, round((x1 - x0) / side)), max(1, round((y1 - y0) / side))
     column, row = (a.ravel() for a in np.meshgrid(np.arange(nx), np.arange(ny)))
     cx = x0 + 0.5 * ((x1 - x0) - nx * side) + (column + 0.5) * side
@@ -85,22 +85,49 @@ def cell_correlation(cells: Cells, patch: float) -> Floats:
 def cell_responses(places: Places, state: State, x: Floats, y: Floats, cells: Cells) -> Floats:
     """J (k, c): change of the head (m) at levels x, y (k,) per unit ln K in each cell.
 
-    The source's own singular part is integrated exactly over every cell, the regular part taken at the middle.
+    Of the product of both discharges the singular parts of the level's source and of the wells are means over the
+    cell in closed form, the rest is taken near the middle.
     """
     flow = flow_of(places, state)
-    q0x, q0y = flow.discharge(cells.x, cells.y)
+    at_x, at_y = _sample_points(places, cells)
+    q0x, q0y = flow.discharge(at_x, at_y)
+    square = _unit_square(cells.side)
+    for well, rate in zip(places.wells, state.setting.well_rates, strict=True):
+        # at a point the pull of a well has no bound: by reciprocity its mean is the pull of the square on the well
+        dx, dy = well.x - at_x, well.y - at_y
+        mean_x, mean_y = square.discharge(well.x - cells.x, well.y - cells.y)
+        reach = np.maximum(dx * dx + dy * dy, well.radius**2)
+        q0x += rate * (mean_x / cells.side**2 - dx / (2.0 * np.pi * reach))
+        q0y += rate * (mean_y / cells.side**2 - dy / (2.0 * np.pi * reach))
     fields = unit_source_fields(places, state, x, y)
     phi = flow.potential(x, y)
     thick = np.maximum(flow.aquifer.saturated_thickness(phi), 1e-3)
     slope = flow.aquifer.conductivity * thick
-    square = _unit_square(cells.side)
     out = np.empty((x.size, cells.x.size))
     for k, field in enumerate(fields):
-        gx, gy = field.discharge(cells.x, cells.y)
+        gx, gy = field.discharge(at_x, at_y)
         sx, sy = square.discharge(x[k] - cells.x, y[k] - cells.y)
         # grad G = -discharge of the regular part, plus the exact integral of the source's own gradient
         out[k] = ((sx - gx * cells.side**2) * q0x + (sy - gy * cells.side**2) * q0y) / slope[k]
     return out
+
+
+def _sample_points(places: Places, cells: Cells) -> tuple[Floats, Floats]:
+    """Middles of the cells (c,), moved off the vertices of lines, where the discharge has no bound.
+
+    At a tip both discharges grow as r^(-1/2): their product has its mean over a square round it at r = 0.28 side.
+    """
+    if not places.lines:
+        return cells.x, cells.y
+    z = cells.x + 1j * cells.y
+    vertices = np.concatenate([line.x + 1j * line.y for line in places.lines])
+    gap = z[:, None] - vertices
+    nearest = np.argmin(abs(gap), axis=1)
+    away = gap[np.arange(z.size), nearest]
+    distance = abs(away)
+    towards = np.where(distance > 0, away / np.where(distance > 0, distance, 1.0), 1.0 + 0.0j)
+    moved = np.where(distance < 0.28 * cells.side, vertices[nearest] + 0.28 * cells.side * towards, z)
+    return np.ascontiguousarray(moved.real), np.ascontiguousarray(moved.imag)
 
 
 def _unit_square(side: float) -> FlowField:
