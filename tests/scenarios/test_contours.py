@@ -14,7 +14,7 @@ from wellshed.solver.boundary import solve
 
 def test_the_interval_of_the_check():
     assert contour_interval(31.2, 38.4) == 1.0
-    assert (38.4 - 31.2) / 1.0 == pytest.approx(7.2)
+    assert pytest.approx(7.2) == (38.4 - 31.2) / 1.0
 
 
 @given(st.floats(-500, 9000), st.floats(1e-3, 5e3))
