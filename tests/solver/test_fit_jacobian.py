@@ -82,9 +82,9 @@ def build(name, reference=True):
     if not reference:
         regional = None
     inputs = Inputs(setting, regional)
-    solution = solve_places(places, setting, tolerance=2e-4)
+    solution = solve_places(places, setting, tolerance=1e-3)
     inputs = Inputs(solve_inputs(solution.state.system, inputs).state.setting, regional)
-    solution = solve_places(places, inputs.setting, tolerance=2e-4)
+    solution = solve_places(places, inputs.setting, tolerance=1e-3)
     parameters = parameters_of(name, lines)
     x, y = np.array([-200.0, 100, 620, 150, -60, 350]), np.array([250.0, -150, 300, 300, -40, -250])
     spring = [p.target for p in parameters].index("starts_with")
@@ -101,8 +101,8 @@ def build(name, reference=True):
     return solution.state.system, inputs, parameters, readings
 
 
-def central(model, theta, k):
-    """Derivative of all readings after parameter k, from two solves that share nothing with the base."""
+def central(model, theta, k, near):
+    """Derivative of all readings after parameter k."""
     p = model.parameters[k]
     step = STEP.get(p.target, 1e-3) * (max(abs(theta[k]), 1.0) if p.target not in STEP else 1.0)
     if not p.log and p.target in ("gradient", "bed"):
@@ -111,7 +111,7 @@ def central(model, theta, k):
     for sign in (1, -1):
         moved = theta.copy()
         moved[k] += sign * step
-        ends.append(model.at(moved, None)[1])
+        ends.append(model.at(moved, near)[1])
     return (ends[0] - ends[1]) / (2 * step)
 
 
@@ -119,7 +119,7 @@ def compare(model, theta):
     solved, _ = model.at(theta, None)
     found = model.jacobian(solved, theta)
     for k, p in enumerate(model.parameters):
-        expected = central(model, theta, k)
+        expected = central(model, theta, k, solved)
         for part in (slice(0, 6), slice(6, None)):  # heads (m) and flows (m3/d) have their own sizes
             size = abs(expected[part]).max()
             assert found[part, k] == pytest.approx(expected[part], rel=3e-4, abs=3e-4 * size + 1e-9), p.name
