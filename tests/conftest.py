@@ -1,7 +1,11 @@
 """What all tests share: the option for longer studies, and the source tree."""
 
+import os
 import sys
 from pathlib import Path
+
+# as the command line does: small matrices lose more by waiting threads than they gain (set before numpy is loaded)
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
 
 import pytest
 
