@@ -61,6 +61,15 @@ def test_tolerance_is_met_at_random_points_and_next_to_every_end(solved):
     assert CAUTION > 1.0
 
 
+@pytest.mark.xfail(strict=True, reason="the check points miss the kink where a bed's leakage stops growing")
+def test_tolerance_is_met_between_the_check_points_of_a_bed_with_an_underside():
+    # the random places above seldom fall beside the kink; 1,500 a panel find 1.19e-4 m, reported as 0.81e-4 m and met
+    solution = solve(AQUIFER, SITES["leaky bed with an underside"][0], tolerance=1e-4)
+    assert solution.boundary.met
+    _, misfit = check_misfit(solution.places, solution.state, np.linspace(5e-4, 1 - 5e-4, 1500))
+    assert abs(misfit).max() <= solution.boundary.tolerance
+
+
 def ring_flow(flow, x, y, n=400):
     """Water (m3/d) that leaves a closed polygon of places, by Gauss rule on its sides."""
     nodes, weights = np.polynomial.legendre.leggauss(n)
