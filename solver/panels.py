@@ -86,10 +86,11 @@ def row_coordinates() -> Floats:
     return 0.5 - 0.5 * np.cos(np.pi * (np.arange(N_ROW) + 0.5) / N_ROW)
 
 
-def check_coordinates() -> Floats:
-    """Check points in u: midway between the collocation points, and both ends."""
+def check_coordinates(between: int = 1) -> Floats:
+    """Check points in u: evenly ``between`` the collocation points (one: midway), and both ends."""
     u = row_coordinates()
-    return np.concatenate([[0.0], 0.5 * (u[1:] + u[:-1]), [1.0]])
+    inner = [u[:-1] + k / (between + 1) * (u[1:] - u[:-1]) for k in range(1, between + 1)]
+    return np.concatenate([[0.0], np.sort(np.concatenate(inner)), [1.0]])
 
 
 @cache

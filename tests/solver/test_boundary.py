@@ -1,5 +1,7 @@
 """The boundary solve holds what it says: at random points of every panel, in flux, and where it must refuse."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 import shapely
@@ -10,7 +12,7 @@ from wellshed.elements.recharge import RechargeArea
 from wellshed.elements.regional_flow import RegionalFlow
 from wellshed.elements.stream import Stream
 from wellshed.elements.well import PumpingWell
-from wellshed.solver.boundary import CAUTION, check_misfit, solve
+from wellshed.solver.boundary import check_misfit, solve
 from wellshed.solver.network import GeometryError
 from wellshed.solver.state import NotSolvedError
 
@@ -57,13 +59,11 @@ def test_tolerance_is_met_at_random_points_and_next_to_every_end(solved):
     u = np.concatenate([rng.uniform(0, 1, 20), 0.01 ** np.arange(1, 3), 1.0 - 0.01 * rng.uniform(0, 1, 4)])
     _, misfit = check_misfit(solution.places, solution.state, np.sort(u))
     assert abs(misfit).max() <= solution.boundary.tolerance
-    assert abs(misfit).max() <= 1.05 * solution.boundary.max_misfit  # what is reported bounds what is found
-    assert CAUTION > 1.0
+    assert abs(misfit).max() <= solution.boundary.max_misfit  # what is reported bounds what is found
 
 
-@pytest.mark.xfail(strict=True, reason="the check points miss the kink where a bed's leakage stops growing")
 def test_tolerance_is_met_between_the_check_points_of_a_bed_with_an_underside():
-    # the random places above seldom fall beside the kink; 1,500 a panel find 1.19e-4 m, reported as 0.81e-4 m and met
+    # where the leakage stops growing the misfit has a kink, which few random places hit
     solution = solve(AQUIFER, SITES["leaky bed with an underside"][0], tolerance=1e-4)
     assert solution.boundary.met
     _, misfit = check_misfit(solution.places, solution.state, np.linspace(5e-4, 1 - 5e-4, 1500))
@@ -84,29 +84,53 @@ def ring_flow(flow, x, y, n=400):
 
 def round_line(line, gap):
     """A polygon round a line at a distance, counter-clockwise."""
-    shape = shapely.LineString(np.stack([line.x, line.y], axis=1)).buffer(gap, join_style="mitre", cap_style="square")
+    xy = np.stack([line.x, line.y], axis=1)
+    course = shapely.Polygon(xy) if getattr(line, "closed", False) else shapely.LineString(xy)
+    shape = course.buffer(gap, join_style="mitre", cap_style="square")
     xy = shapely.get_coordinates(shapely.geometry.polygon.orient(shape).exterior)[:-1]
     return xy[:, 0], xy[:, 1]
 
 
-@pytest.mark.parametrize("name", ["brook with free tips", "leaky bed with an underside", "open rim in regional flow"])
-def test_flux_of_a_stream_is_what_leaves_a_curve_round_it(name):
-    elements, reference = SITES[name]
+FLUXES = [
+    ("brook with free tips", "brook"), ("leaky bed with an underside", "sluggish"), ("open shore", "shore"),
+    ("open rim in regional flow", "brook"), ("tarn on an island", "tarn"), ("rim, impermeable", "tarn"),
+]  # fmt: skip
+
+
+@pytest.mark.parametrize(("site", "feature"), FLUXES)
+def test_flux_of_a_feature_is_what_leaves_a_curve_round_it(site, feature):
+    elements, reference = SITES[site]
     solution = solve(AQUIFER, elements, reference=reference)
-    stream = next(e for e in elements if isinstance(e, Stream))
-    x, y = round_line(stream, 12.0)
-    rain = sum(e.rate for e in elements if isinstance(e, RechargeArea)) * shapely.Polygon(np.stack([x, y], axis=1)).area
+    line = next(e for e in elements if getattr(e, "name", "") == feature)
+    x, y = round_line(line, 12.0)
+    ground = shapely.Polygon(np.stack([x, y], axis=1)).area
+    if getattr(line, "closed", False):
+        ground -= shapely.Polygon(np.stack([line.x, line.y], axis=1)).area
+    rain = sum(e.rate for e in elements if isinstance(e, RechargeArea)) * ground
     expected = ring_flow(solution.flow, x, y) - rain
-    moved = abs(expected) + rain + 1.0
-    assert solution.feature_flow(stream.name) == pytest.approx(expected, abs=2e-6 * moved)
+    assert solution.feature_flow(feature) == pytest.approx(expected, abs=2e-6 * (abs(expected) + rain + 1.0))
 
 
-def test_flux_of_a_lake_is_what_leaves_a_curve_round_it():
-    elements, _ = SITES["tarn on an island"]
+def test_a_brook_and_its_tributary_together_give_what_leaves_a_curve_round_both():
+    elements, _ = SITES["rill ending on a brook"]
     solution = solve(AQUIFER, elements)
-    x, y = TARN.x + 15 * np.array([-1, 1, 1, -1]), TARN.y + 15 * np.array([-1, -1, 1, 1])
-    ground = shapely.Polygon(np.stack([x, y], axis=1)).area - shapely.Polygon(np.stack([TARN.x, TARN.y], axis=1)).area
-    assert solution.feature_flow("tarn") == pytest.approx(ring_flow(solution.flow, x, y) - ground * 8e-4, abs=1e-4)
+    both = shapely.union_all([shapely.LineString(np.stack([s.x, s.y], axis=1)) for s in (BROOK, RILL)])
+    xy = shapely.get_coordinates(shapely.geometry.polygon.orient(both.buffer(10.0)).exterior)[:-1]
+    rain = 8e-4 * both.buffer(10.0).area
+    total = solution.feature_flow("brook") + solution.feature_flow("rill")
+    assert total == pytest.approx(ring_flow(solution.flow, *xy.T, n=40) - rain, rel=1e-5)
+
+
+def test_an_island_shore_takes_what_falls_less_what_is_pumped():
+    solution = solve(AQUIFER, SITES["island with corners"][0])
+    x, y = ISLAND.x, ISLAND.y
+    middle = np.array([x.mean(), y.mean()])
+    inside = middle[0] + 0.97 * (x - middle[0]), middle[1] + 0.97 * (y - middle[1])
+    area = shapely.Polygon(np.stack(inside, axis=1)).area
+    leaving = ring_flow(solution.flow, *inside)
+    assert leaving == pytest.approx(8e-4 * area - 420.0, abs=1e-3)  # the field itself, by quadrature
+    whole = shapely.Polygon(np.stack([x, y], axis=1)).area
+    assert solution.feature_flow("shore") == pytest.approx(420.0 - 8e-4 * whole, rel=1e-9)
 
 
 def test_inflow_along_a_rim_enters_the_balance():
@@ -121,6 +145,9 @@ def test_a_bed_leaks_no_more_than_its_underside_allows():
     # over deep ground the loss per length is (width / resistance) x depth of the underside, whatever the head below
     deep = LakeEdge("shore", 3 * ISLAND.x - 400, 3 * ISLAND.y - 400, 10.0, land_inside=True)
     solution = solve(AQUIFER, [deep, SLUGGISH])
+    flush = solve(AQUIFER, [deep, replace(SLUGGISH, bottom=0.0)])  # the underside at the stage: nothing leaks
+    assert flush.boundary.met
+    assert flush.feature_flow("sluggish") == pytest.approx(0.0, abs=1e-6)
     length = float(np.hypot(np.diff(BROOK.x), np.diff(BROOK.y)).sum())
     assert solution.feature_flow("sluggish") == pytest.approx(4.0 / 2.0 * 0.7 * length, rel=1e-6)
 
