@@ -138,8 +138,12 @@ def _inflow(system: System, setting: Setting) -> Floats:
 
 def _bottoms(system: System, setting: Setting, stage: Floats) -> Floats:
     """Underside of the clogged layer (m) at every row; -inf where none is given: leakage stops growing below it."""
-    depth = [s.bottom if isinstance(s, Stream) and s.bottom is not None else np.inf for s in system.places.lines]
-    return stage - np.array(depth)[_line(system)]
+    return stage - bed_depths(system.places)[_line(system)]
+
+
+def bed_depths(places: Places) -> Floats:
+    """Depth (m) of the underside of each line's clogged layer below its stage, (l,); inf where none is given."""
+    return np.array([s.bottom if isinstance(s, Stream) and s.bottom is not None else np.inf for s in places.lines])
 
 
 def side_conditions(system: System, setting: Setting) -> tuple[Floats, Floats]:
