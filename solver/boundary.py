@@ -16,7 +16,7 @@ from .balance import BalanceRow, balance_rows
 from .network import BED, HEAD, WALL, GeometryError, make_edges
 from .panels import Mesh, check_coordinates, densities, first_mesh, row_coordinates, split
 from .setting import Element, Places, Setting, sort_elements
-from .state import NotSolvedError, State, flow_of, row_stages, row_weights, solve_state
+from .state import NotSolvedError, State, bed_depths, flow_of, row_stages, row_weights, solve_state
 from .system import Rows, System, assemble, make_rows, normal_flow
 
 CAUTION = 1.3  # the largest misfit seen at the check points was 0.78 to 1.00 of the true largest one
@@ -147,7 +147,7 @@ def _bed_misfit(places: Places, state: State, rows: Rows, bed: np.ndarray, phi: 
     line = mesh.edges.line[mesh.edge[panel]]
     n = mesh.n_unknown // mesh.edge.size
     strength = np.sum(densities(u, 1, bounded=True) * state.x[:-1].reshape(-1, n)[panel], axis=1)
-    depth = np.array([np.inf if getattr(s, "bottom", None) is None else s.bottom for s in places.lines])[line]
+    depth = bed_depths(places)[line]
     head = np.maximum(setting.aquifer.head(phi), stage - depth)
     return head - stage - strength / setting.conductances[line]
 
