@@ -5,12 +5,14 @@ again to compile, must not be entered from two threads, and break processes that
 itself: results do not depend on the number of threads.
 """
 
+import os
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
+from functools import cache
 
 import numba
 
-SMALL = 256  # points: fewer are not worth a thread (starting some costs as much as evaluating about a hundred)
+SMALL = 256  # points: fewer are not worth a thread
 PER_THREAD = 4  # blocks for each thread, so that none waits long for the slowest
 
 
@@ -25,5 +27,14 @@ def in_blocks(work: Callable[[slice], None], n: int, small: int = SMALL) -> None
         work(slice(0, n))
         return
     size = max(-(-n // (PER_THREAD * threads)), -(-small // PER_THREAD))
-    with ThreadPoolExecutor(threads) as pool:
-        list(pool.map(work, [slice(start, min(start + size, n)) for start in range(0, n, size)]))
+    list(_pool(threads).map(work, [slice(start, min(start + size, n)) for start in range(0, n, size)]))
+
+
+@cache
+def _pool(threads: int) -> ThreadPoolExecutor:
+    """Threads that are kept, since starting them costs as much as some hundred points."""
+    return ThreadPoolExecutor(threads, thread_name_prefix="wellshed")
+
+
+if hasattr(os, "register_at_fork"):  # a child has none of its parent's threads
+    os.register_at_fork(after_in_child=_pool.cache_clear)

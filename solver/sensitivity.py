@@ -12,11 +12,12 @@ import numpy as np
 
 from ..elements.field_arrays import Floats
 from ..elements.flow_field import FlowField, superpose
-from ..elements.well import PumpingWell
 from .network import BED, HEAD, WALL
 from .setting import Places, Setting
 from .state import State, row_stages, source_supply
-from .system import UNIT, System, normal_flow, panel_strengths, potential_matrix, source_potentials, source_strengths
+from .system import UNIT, System, panel_strengths, potential_matrix, source_potentials, source_strengths
+
+SOURCE = 1e-3  # m: radius of a unit source
 
 
 @dataclass(frozen=True)
@@ -126,16 +127,16 @@ def unit_source_fields(places: Places, state: State, x: Floats, y: Floats) -> li
     at_rows = np.zeros((system.rows.z.size, x.size))
     conditions = np.zeros((len(system.circulation) + 1, x.size))
     wall = condition == WALL
-    for k in range(x.size):
-        source = _source_field(places, float(x[k]), float(y[k]))
-        z = system.rows.z[~wall]
-        at_rows[~wall, k] = source.potential(z.real + places.origin[0], z.imag + places.origin[1])
-        if wall.any():
-            at_rows[wall, k] = normal_flow(source, system.rows, wall) * system.rows.stretch[wall]
-        if places.reference is None:
-            conditions[-1, k] = 1.0
-        else:
-            conditions[-1, k] = -float(source.potential(*places.reference))
+    at = (x - places.origin[0]) + 1j * (y - places.origin[1])
+    away = system.rows.z[:, None] - at
+    at_rows[~wall] = _source_potential(away[~wall], places)
+    outward = away[wall] / (2.0 * np.pi * abs(away[wall]) ** 2)
+    normal = system.rows.normal[wall][:, None]
+    at_rows[wall] = (outward * np.conj(normal)).real * system.rows.stretch[wall][:, None]
+    if places.reference is None:
+        conditions[-1] = 1.0
+    else:
+        conditions[-1] = -_source_potential(complex(*places.reference) - complex(*places.origin) - at, places)
     dx = state.response(at_rows * state.weight[:, None], conditions)
     fields = []
     for k in range(x.size):
@@ -154,7 +155,6 @@ def unit_source_fields(places: Places, state: State, x: Floats, y: Floats) -> li
     return fields
 
 
-def _source_field(places: Places, x: float, y: float) -> FlowField:
-    """A unit injection alone."""
-    well = PumpingWell("source", x, y, -1.0, 1e-3)
-    return superpose(UNIT, origin=places.origin, scale=places.scale, wells=[well])
+def _source_potential(away: np.ndarray, places: Places) -> Floats:
+    """Potential (m3/d) of a unit injection at complex distances (m) from it (Thiem 1906)."""
+    return -np.log(np.maximum(abs(away), SOURCE) / places.scale) / (2.0 * np.pi)
