@@ -1,7 +1,9 @@
 """From answers to the map of a case: what stands on it, its footer, its files."""
 
 import os
+import signal
 import sys
+import time
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -17,6 +19,7 @@ from .maps import STYLE, draw_map
 from .summary import residual_rows
 
 DPI = 160
+PATIENCE = 120.0  # s for the maps of all cases
 
 
 @dataclass(frozen=True)
@@ -36,8 +39,8 @@ class CaseMap:
 def save_maps(maps: list[tuple[CaseMap, Path]]) -> None:
     """Save maps to their stems; where the system can, the first one here and the others beside it in a second process.
 
-    Drawing starts no threads and compiled code leaves none behind, so that a fork is safe. What the second process
-    could not save is drawn here, where an error is raised as usual.
+    Drawing starts no threads and those of the kernels are idle by now, so that a fork is safe. What the second
+    process could not save is drawn here, where an error is raised as usual.
     """
     first, others = maps[:1], maps[1:]
     child = os.fork() if others and sys.platform == "linux" else None
@@ -55,9 +58,22 @@ def save_maps(maps: list[tuple[CaseMap, Path]]) -> None:
             drawn.save(stem)
     finally:
         if child is not None:
-            saved = os.waitpid(child, 0)[1] == 0
+            saved = _ended_well(child)
     for drawn, stem in [] if saved else others:
         drawn.save(stem)
+
+
+def _ended_well(child: int) -> bool:
+    """Whether a process ends with code 0; one that hangs is stopped."""
+    end = time.monotonic() + PATIENCE
+    while time.monotonic() < end:
+        found, status = os.waitpid(child, os.WNOHANG)
+        if found:
+            return status == 0
+        time.sleep(0.01)
+    os.kill(child, signal.SIGKILL)
+    os.waitpid(child, 0)
+    return False
 
 
 def map_of(answers: Answers, case_name: str) -> CaseMap:
