@@ -171,10 +171,10 @@ def _zones(axes: Axes, content: MapContent) -> list[Any]:
             continue
         if zone.days is None:
             axes.add_patch(PathPatch(_compound(zone), fill=False, hatch="///", ec="#00000055", lw=0, zorder=6))
-            axes.add_patch(PathPatch(_compound(zone), fill=False, ec=INK, lw=1.9, zorder=7))
+            axes.add_patch(PathPatch(_compound(zone), fill=False, ec=INK, lw=1.9, joinstyle="round", zorder=7))
         else:
             style = TIMES[times.index(zone.days) % len(TIMES)]
-            axes.add_patch(PathPatch(_compound(zone), fill=False, ec="white", lw=2.6, zorder=7))
+            axes.add_patch(PathPatch(_compound(zone), fill=False, ec="white", lw=2.6, joinstyle="round", zorder=7))
             axes.add_patch(PathPatch(_compound(zone), fill=False, ec="#7b1e3a", lw=1.4, ls=style, zorder=8))
     if any(z.days is None for z in content.zones):
         words = "capture zone: some water, at some depth, goes to the well"
