@@ -262,21 +262,27 @@ def near_derivatives(kind, tau, one_minus_tau, n_coef, q, out):
 
 @kernel
 def far_terms(z_abs2):
-    """Number of terms (even) of the far series that gives 1e-14 of the leading term at |Z|^2 = z_abs2 (>= NEAR^2)."""
-    if z_abs2 > 1e4:
-        return 8 if z_abs2 < 1e6 else 6
-    if z_abs2 > 400.0:
-        return 12
+    """Number of terms n (even) of the far series with |Z|^-n below 1e-14, at |Z|^2 = z_abs2 (>= NEAR^2)."""
+    if z_abs2 > 640.0:
+        if z_abs2 > 3.2e3:
+            return 8 if z_abs2 < 4.7e4 else 6
+        return 10
     if z_abs2 > 100.0:
-        return 16
-    if z_abs2 > 36.0:
-        return 20
-    if z_abs2 > 16.0:
-        return 26
-    if z_abs2 > 9.0:
+        return 12 if z_abs2 > 216.0 else 14
+    if z_abs2 > 25.2:
+        if z_abs2 > 56.3:
+            return 16
+        return 18 if z_abs2 > 36.0 else 20
+    if z_abs2 > 14.7:
+        return 24
+    if z_abs2 > 10.0:
+        return 28
+    if z_abs2 > 6.7:
         return 34
-    if z_abs2 > 5.0:
-        return 46
+    if z_abs2 > 4.65:
+        return 42
+    if z_abs2 > 3.3:
+        return 54
     return N_MOMENT
 
 
