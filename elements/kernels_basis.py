@@ -7,7 +7,7 @@ form of ``kernels_line``, with ``doublets`` giving the potential of a unit jump 
 import numpy as np
 
 from .jit import driver
-from .kernels_field import NEAR2, constant_doublet, panel_place
+from .kernels_field import NEAR2, constant_doublet, from_middle, panel_place
 from .kernels_line import N_WORK, far_terms, near_derivatives, near_potentials
 
 
@@ -22,12 +22,7 @@ def basis_potentials(x, y, panels, first, tables, log_scale, out):
     for i in range(x.size):
         for p in range(panels.kind.size):
             c = panels.panel[p, 8] / (2.0 * np.pi)
-            dx = x[i] - panels.panel[p, 4]
-            dy = y[i] - panels.panel[p, 5]
-            hx = panels.panel[p, 6]
-            hy = panels.panel[p, 7]
-            d2 = dx * dx + dy * dy
-            h2 = hx * hx + hy * hy
+            dx, dy, hx, hy, d2, h2 = from_middle(x[i], y[i], panels.panel, p)
             n_coef = panels.n_coef[p]
             if d2 > NEAR2 * h2 and panels.vortex[p] == 0:
                 table = tables[panels.kind[p]]

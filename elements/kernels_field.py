@@ -33,6 +33,16 @@ def panel_place(x, y, panel, p):
 
 
 @kernel
+def from_middle(x, y, panel, p):
+    """Vector from the middle of panel p to the point, the panel's half vector, and the squares of both lengths."""
+    dx = x - panel[p, 4]
+    dy = y - panel[p, 5]
+    hx = panel[p, 6]
+    hy = panel[p, 7]
+    return dx, dy, hx, hy, dx * dx + dy * dy, hx * hx + hy * hy
+
+
+@kernel
 def near_panel_potential(x, y, p, panel, kind, n_coef, coef, log_scale, work):
     """Complex potential Omega (m3/d) of panel p by the closed form; order 0 of the imaginary part as a doublet."""
     tau, rest = panel_place(x, y, panel, p)
@@ -133,12 +143,7 @@ def potential_at(x, y, f, work):
     panel, kind, vortex, n_coef, coef = f.panel, f.kind, f.vortex, f.n_coef, f.coef
     moment, log_moment, jump = f.moment, f.log_moment, f.jump
     for p in range(kind.shape[0]):
-        dx = x - panel[p, 4]
-        dy = y - panel[p, 5]
-        hx = panel[p, 6]
-        hy = panel[p, 7]
-        d2 = dx * dx + dy * dy
-        h2 = hx * hx + hy * hy
+        dx, dy, hx, hy, d2, h2 = from_middle(x, y, panel, p)
         if d2 > NEAR2 * h2:
             inv = 1.0 / d2
             tr = (hx * dx + hy * dy) * inv
@@ -172,12 +177,7 @@ def discharge_at(x, y, f, work):
     # the arrays by name: a call with the whole field would copy it for every panel
     panel, kind, vortex, n_coef, coef, moment = f.panel, f.kind, f.vortex, f.n_coef, f.coef, f.moment
     for p in range(kind.shape[0]):
-        dx = x - panel[p, 4]
-        dy = y - panel[p, 5]
-        hx = panel[p, 6]
-        hy = panel[p, 7]
-        d2 = dx * dx + dy * dy
-        h2 = hx * hx + hy * hy
+        dx, dy, hx, hy, d2, h2 = from_middle(x, y, panel, p)
         if d2 > NEAR2 * h2:
             inv = 1.0 / d2
             tr = (hx * dx + hy * dy) * inv

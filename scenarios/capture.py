@@ -10,7 +10,7 @@ from ..tracing.endings import Ending
 from ..tracing.obstacles import Obstacles
 from ..tracing.pathlines import trace
 from ..tracing.stagnation import StagnationPoint, stagnation_points
-from ..tracing.zones import CaptureZone, TimeZone, capture_zone
+from ..tracing.zones import MOST_PATHS, CaptureZone, TimeZone, capture_zone
 from .cases import CaseAnswer
 from .context import BASE, Check, Context, Result, Row, drawn_area, obstacles_of
 from .map_content import MapContent, ZoneMark
@@ -128,8 +128,11 @@ def _result(
     extent = "leaves the drawn area; within it" if zone.open else "covers"
     where = "" if case.name == BASE else f", case {case.name}"
     words = f"{well} at {rate:.4g} m3/d{where}: capture zone {extent} {zone.area / 1e6:.3f} km2; supplied by {sources}."
-    check = Check(f"water of {well} traced to its sources in {case.name}", unknown <= BUDGET, unknown, BUDGET)
-    return Result("capture_zone", case.name, entry, words, layers, {"time_zones": table}, files, (check,), on_map)
+    checks = (
+        Check(f"water of {well} traced to its sources in {case.name}", unknown <= BUDGET, unknown, BUDGET),
+        Check(f"border of {well} settled in {case.name} (pathlines)", zone.settled, len(zone.paths.points), MOST_PATHS),
+    )
+    return Result("capture_zone", case.name, entry, words, layers, {"time_zones": table}, files, checks, on_map)
 
 
 def _time_row(columns: dict[str, Any], part: TimeZone, days: float, ranged: tuple[TimeZone, TimeZone]) -> Row:

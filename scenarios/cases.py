@@ -17,7 +17,7 @@ from .building import Model, build
 from .fitting import Fitted, natural, settle
 from .scenario import Case, Change, Scenario, Value
 
-_Any = TypeVar("_Any")
+_T = TypeVar("_T")
 
 
 @dataclass(frozen=True)
@@ -95,7 +95,7 @@ def _changed(value: float, change: Change) -> float:
     return value + (change.amount or 0.0)
 
 
-def _with(thing: _Any, name: str, value: Any) -> _Any:
+def _with(thing: _T, name: str, value: Any) -> _T:
     """The same with one field, known by its name, put in anew."""
     return replace(thing, **{name: value})  # type: ignore[type-var]
 

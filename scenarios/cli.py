@@ -74,7 +74,7 @@ def run(
     with _Progress() as progress:
         answers = answer(read, progress=progress)
         progress("writing")
-        write(answers, folder)
+        write(answers, folder, second_process=True)
     for line in report_lines(answers):
         typer.echo(line)
     typer.echo(f"answers in {folder}")

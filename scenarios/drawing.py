@@ -36,14 +36,15 @@ class CaseMap:
         figure.savefig(stem.with_suffix(".png"), dpi=DPI, metadata={"Software": None})
 
 
-def save_maps(maps: list[tuple[CaseMap, Path]]) -> None:
-    """Save maps to their stems; where the system can, the first one here and the others beside it in a second process.
+def save_maps(maps: list[tuple[CaseMap, Path]], second_process: bool = False) -> None:
+    """Save maps to their stems.
 
-    Drawing starts no threads and those of the kernels are idle by now, so that a fork is safe. What the second
-    process could not save is drawn here, where an error is raised as usual.
+    second_process: the first one here, the others beside it in a forked process (Linux). For a program of which we
+    know the threads: those of the kernels are idle by now, and drawing starts none. What the second process could
+    not save is drawn here, where an error is raised as usual.
     """
     first, others = maps[:1], maps[1:]
-    child = os.fork() if others and sys.platform == "linux" else None
+    child = os.fork() if second_process and others and sys.platform == "linux" else None
     if child == 0:
         code = 1
         try:

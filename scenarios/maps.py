@@ -28,6 +28,7 @@ WATER, DEEP, LOSS, INK = "#d6e6f2", "#1b4f7a", "#a0522d", "#222222"
 TIMES = [(0, (5, 2)), (0, (5, 1.5, 1, 1.5)), (0, (1.2, 1.4)), (0, (8, 2, 1, 1, 1, 2))]
 LANDSCAPE, PORTRAIT = (11.69, 8.27), (8.27, 11.69)  # A4, inches
 TOP, SIDE = 0.62, 0.72  # inches above and beside the map
+WIDE_LEGEND = 10.0  # inches that three columns of the legend take
 ROW, LINE = 0.14, 0.113  # inches for a row of the legend and a line of the footer
 
 
@@ -56,35 +57,29 @@ def draw_map(content: MapContent) -> Figure:
 
 @dataclass(frozen=True)
 class Page:
-    """Sizes in inches: the page, what stands below the map; legend columns; scale (inches per m)."""
+    """The page's size in inches, the number of legend columns and the map's scale (inches per m)."""
 
     width: float
     height: float
-    bottom: float
     columns: int
     scale: float
 
 
 def _page(content: MapContent, n_handles: int) -> Page:
-    """The page (A4 less what would stay empty) at which the map comes out largest.
+    """The page (A4 less what would stay empty) at which the map comes out largest."""
+    pages = [_fitted(content, n_handles, LANDSCAPE, 3), _fitted(content, n_handles, PORTRAIT, 2)]
+    if pages[0].width < WIDE_LEGEND:  # no room for three columns
+        pages[0] = _fitted(content, n_handles, LANDSCAPE, 2)
+    return max(pages, key=lambda page: page.scale)
 
-    Never narrower than an upright A4, the legend's width.
-    """
+
+def _fitted(content: MapContent, n_handles: int, sheet: tuple[float, float], columns: int) -> Page:
+    """A sheet trimmed round the map; never narrower than an upright A4, the width of two legend columns."""
     x0, x1, y0, y1 = content.box
-    found = []
-    for width, height in (LANDSCAPE, PORTRAIT):
-        columns = 3 if width > 10.0 else 2
-        bottom = 0.42 + ROW * -(-n_handles // columns) + 0.18 + LINE * len(content.footer) + 0.14
-        scale = min((width - 2 * SIDE) / (x1 - x0), (height - TOP - bottom) / (y1 - y0))
-        trimmed = max(scale * (x1 - x0) + 2 * SIDE, PORTRAIT[0])
-        if trimmed <= 10.0 < width:  # no room for three columns
-            columns = 2
-            bottom = 0.42 + ROW * -(-n_handles // columns) + 0.18 + LINE * len(content.footer) + 0.14
-            scale = min((width - 2 * SIDE) / (x1 - x0), (height - TOP - bottom) / (y1 - y0))
-            trimmed = max(scale * (x1 - x0) + 2 * SIDE, PORTRAIT[0])
-        full = scale * (y1 - y0) + TOP + bottom
-        found.append(Page(min(trimmed, width), min(full, height), bottom, columns, scale))
-    return max(found, key=lambda page: page.scale)
+    bottom = 0.42 + ROW * -(-n_handles // columns) + 0.18 + LINE * len(content.footer) + 0.14
+    scale = min((sheet[0] - 2 * SIDE) / (x1 - x0), (sheet[1] - TOP - bottom) / (y1 - y0))
+    width = max(scale * (x1 - x0) + 2 * SIDE, PORTRAIT[0])
+    return Page(min(width, sheet[0]), min(scale * (y1 - y0) + TOP + bottom, sheet[1]), columns, scale)
 
 
 def _frame(axes: Axes, box: tuple[float, float, float, float], page: Page) -> None:

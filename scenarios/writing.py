@@ -18,12 +18,15 @@ from .tables import table_text
 __all__ = ["WritingError", "write"]
 
 
-def write(answers: Answers, folder: Path) -> None:
-    """Write all answers to a folder, whole or not at all; raises WritingError."""
-    write_folder(folder, lambda fresh: _produce(answers, fresh))
+def write(answers: Answers, folder: Path, second_process: bool = False) -> None:
+    """Write all answers to a folder, whole or not at all; raises WritingError.
+
+    second_process: draw the cases' maps in a forked process (see ``save_maps``); not from a program with threads.
+    """
+    write_folder(folder, lambda fresh: _produce(answers, fresh, second_process))
 
 
-def _produce(answers: Answers, folder: Path) -> None:
+def _produce(answers: Answers, folder: Path, second_process: bool) -> None:
     content = json.dumps(_plain_all(answers.to_json()), indent=2, ensure_ascii=False, allow_nan=False)
     _text(folder / "answers.json", content + "\n")
     crs = answers.scenario.site.crs
@@ -43,7 +46,7 @@ def _produce(answers: Answers, folder: Path) -> None:
         stem = "map" if case == BASE else safe_file_name(f"map_{case}", {*taken, "map"})
         taken.add(stem)
         maps.append((map_of(answers, case), folder / stem))
-    save_maps(maps)
+    save_maps(maps, second_process)
 
 
 def _text(path: Path, text: str) -> None:

@@ -113,9 +113,8 @@ def check_misfit(places: Places, state: State, u: Floats | None = None) -> tuple
     system, setting = state.system, state.setting
     mesh = system.mesh
     if u is None:
-        u = check_coordinates(
-            AT_KINKS if any(getattr(line, "bottom", None) is not None for line in places.lines) else 1
-        )
+        kinks = bool(np.isfinite(bed_depths(places)).any())
+        u = check_coordinates(AT_KINKS if kinks else 1)
     rows = make_rows(places, mesh, u)
     if rows.z.size == 0:
         return rows, np.zeros(0)

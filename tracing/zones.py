@@ -50,7 +50,8 @@ class CaptureZone:
 
     polygon, area (m2): the whole zone inside the clip; open: it leaves the area in which water was followed;
     supply: share of the rate by source ("recharge", each line's name, "beyond the map"); times: as asked; endings:
-    how many pathlines ended why; parted: number of dividing lines met.
+    how many pathlines ended why; parted: number of dividing lines met; settled: False where more pathlines were
+    wanted than are allowed, so that the border is coarser than it should be.
     """
 
     polygon: shapely.Geometry
@@ -60,6 +61,7 @@ class CaptureZone:
     times: tuple[TimeZone, ...]
     endings: dict[str, int]
     parted: int
+    settled: bool
     paths: Pathlines
 
 
@@ -104,8 +106,9 @@ def capture_zone(
     is_open = leaves or clipped.area < whole.area * (1.0 - CUT)
     supply = _supply(flow, centre, circle, angles, paths)
     return CaptureZone(
-        clipped, float(clipped.area), is_open, supply, tuple(asked), paths.counts(), int(apart.sum()), paths
-    )
+        clipped, float(clipped.area), is_open, supply, tuple(asked), paths.counts(), int(apart.sum()),
+        between.size == 0, paths,
+    )  # fmt: skip
 
 
 def _follow(

@@ -9,7 +9,7 @@ import pytest
 from wellshed.elements.aquifer import Aquifer
 from wellshed.elements.field_arrays import make_panels
 from wellshed.elements.flow_field import superpose
-from wellshed.elements.kernels_line import N_COEF
+from wellshed.elements.kernels_line import N_COEF, NEAR, far_terms
 
 Z1, Z2 = -3 + 2j, 5 + 8j  # middle and half vector are exact in floating point
 LENGTH = 10.0
@@ -147,7 +147,11 @@ def on_extension(rng, n):
 
 def at_switches(rng, n):
     """Round the distance where the closed form hands over to the far series, and where its terms change."""
-    radius = rng.choice(np.array([3.0, 4.0, 6.0, 10.0, 20.0, 100.0, 1000.0]), n) * (1 + rng.normal(0, 1e-3, n))
+    grid = np.geomspace(NEAR, 1e3, 20001)
+    terms = np.array([far_terms(r * r) for r in grid])
+    switches = np.concatenate([[NEAR], grid[1:][terms[1:] != terms[:-1]]])
+    assert len(switches) > 8
+    radius = rng.choice(switches, n) * (1 + rng.normal(0, 1e-3, n))
     return (Z1 + Z2) / 2 + (Z2 - Z1) / 2 * radius * np.exp(2j * np.pi * rng.uniform(0, 1, n))
 
 

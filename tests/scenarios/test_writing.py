@@ -4,11 +4,14 @@ import json
 import os
 import subprocess
 import sys
+import tempfile
 import time
 
 import pytest
 from small import changed, put
+from wellshed.scenarios import answering, writing
 from wellshed.scenarios.answering import answer
+from wellshed.scenarios.cli import main
 from wellshed.scenarios.reading import load
 from wellshed.scenarios.swap import WritingError, write_folder
 from wellshed.scenarios.writing import write
@@ -50,8 +53,6 @@ def test_a_failure_at_any_file_leaves_the_old_answers_whole(answers, tmp_path, m
     write(answers, tmp_path / "answers")
     before = contents(tmp_path / "answers")
     count = iter(range(100))
-    from wellshed.scenarios import writing
-
     text, maps = writing._text, writing.save_maps
 
     def failing(path, content):
@@ -62,7 +63,7 @@ def test_a_failure_at_any_file_leaves_the_old_answers_whole(answers, tmp_path, m
     monkeypatch.setattr(writing, "_text", failing)
     if step == 5:
         monkeypatch.setattr(writing, "_text", text)
-        monkeypatch.setattr(writing, "save_maps", lambda _: (_ for _ in ()).throw(OSError(28, "No space left")))
+        monkeypatch.setattr(writing, "save_maps", lambda *_: (_ for _ in ()).throw(OSError(28, "No space left")))
     with pytest.raises(WritingError, match="No space left"):
         write(answers, tmp_path / "answers")
     assert contents(tmp_path / "answers") == before
@@ -125,3 +126,57 @@ def test_a_killed_run_leaves_the_last_good_answers(tmp_path):
         run.kill()
         run.wait()
         assert contents(tmp_path / "answers") == before
+
+
+def command(arguments, capsys):
+    with pytest.raises(SystemExit) as ended:
+        main(arguments)
+    return ended.value.code, capsys.readouterr().err
+
+
+def test_a_read_only_folder_is_said_before_anything_is_computed(answers, tmp_path, monkeypatch, capsys):
+    file = put(tmp_path)
+    write(answers, tmp_path / "answers")
+    before = contents(tmp_path / "answers")
+
+    def refused(*_, **__):
+        raise OSError(30, "Read-only file system")
+
+    monkeypatch.setattr(tempfile, "TemporaryDirectory", refused)
+    monkeypatch.setattr(answering, "answer", lambda *_, **__: pytest.fail("computed, although nothing can be written"))
+    code, said = command(["run", str(file)], capsys)
+    assert code == 2
+    assert "answers-folder" in said
+    assert "Read-only file system" in said
+    assert "--out" in said
+    assert "Traceback" not in said
+    assert contents(tmp_path / "answers") == before
+
+
+@pytest.mark.skipif(os.name != "posix" or os.geteuid() == 0, reason="needs a user whom permissions bind")
+def test_a_folder_without_permission_is_said(tmp_path, capsys):
+    file = put(tmp_path)
+    tmp_path.chmod(0o555)
+    try:
+        code, said = command(["run", str(file)], capsys)
+    finally:
+        tmp_path.chmod(0o755)
+    assert code == 2
+    assert "Permission denied" in said
+
+
+def test_a_disk_that_fills_up_is_said_in_one_message(answers, tmp_path, monkeypatch, capsys):
+    file = put(tmp_path)
+    write(answers, tmp_path / "answers")
+    before = contents(tmp_path / "answers")
+    monkeypatch.setattr(answering, "answer", lambda *_, **__: answers)
+
+    def full(*_):
+        raise OSError(28, "No space left on device")
+
+    monkeypatch.setattr(writing, "_text", full)
+    code, said = command(["run", str(file)], capsys)
+    assert code == 2
+    assert said.count("No space left on device") == 1
+    assert "Traceback" not in said
+    assert contents(tmp_path / "answers") == before

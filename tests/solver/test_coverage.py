@@ -12,7 +12,7 @@ from wellshed.solver.state import flow_of
 
 # In the roughest ground, of patches a quarter of the island, the conductivity's interval is too short (0.80, and 0.84
 # with the ground's own spread and patch): the error model is of first order in the spread, which is no longer small.
-KNOWN_SHORT = {(0.7, 500.0, "conductivity"): 0.75}
+KNOWN_SHORT = {(0.7, 500.0, "conductivity")}
 GROUNDS = [(0.3, 150.0), (0.3, 500.0), (0.7, 150.0), (0.7, 500.0)]
 
 
@@ -70,7 +70,10 @@ def test_coverage_of_ninety_percent_intervals(island, spread, patch):
     for kind, shares in (("default model", default), ("the ground's own", own)):
         listed = ", ".join(f"{n} {s:.3f}" for n, s in zip(names, shares, strict=True))
         print(f"  {kind:17s} {listed}; mean {shares.mean():.3f}", flush=True)
-    least = np.array([KNOWN_SHORT.get((spread, patch, n), 0.85) for n in names])
-    assert np.all((default >= least) & (default <= 0.95))
     assert 0.85 <= default.mean() <= 0.95
     assert 0.85 <= own.mean() <= 0.95
+    off = {n for n, share in zip(names, default, strict=True) if not 0.85 <= share <= 0.95}
+    known = {n for n in names if (spread, patch, n) in KNOWN_SHORT}
+    assert off == known  # no other one, and the known one only as long as it is
+    if known:
+        pytest.xfail(f"known to be too short: {', '.join(sorted(known))}")
