@@ -12,7 +12,7 @@ from functools import cache
 
 import numba
 
-SMALL = 256  # points: fewer are not worth a thread
+SMALL = 1024  # points: fewer are not worth a thread
 PER_THREAD = 4  # blocks for each thread, so that none waits long for the slowest
 
 

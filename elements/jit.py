@@ -44,3 +44,4 @@ if "NUMBA_CACHE_DIR" not in os.environ:
 _FLAGS: dict[str, Any] = {"cache": True, "error_model": "numpy", "fastmath": {"contract"}}
 kernel = numba.njit(**_FLAGS)
 driver = numba.njit(nogil=True, **_FLAGS)  # a loop over points, called from Python: see ``blocks``
+inlined = numba.njit(inline="always", **_FLAGS)

@@ -21,6 +21,8 @@ from .kernels_point import discharge_well, potential_well
 
 NEAR2 = NEAR * NEAR
 FAR_RING2 = 9.0
+BLOCK = 64  # points that are worked on side by side
+N_BLOCK_ROWS = 9
 
 
 @kernel
@@ -77,57 +79,131 @@ def near_discharge(x, y, p, panel, kind, n_coef, coef, work):
 
 
 @kernel
-def rings_at(x, y, ring, ring_start, ring_moment, edge, log_scale):
-    """Potential (m3/d) and discharge (m2/d) of all recharge rings; what the caller drops, the compiler leaves out."""
-    phi = 0.0
+def far_discharges(px, py, n, p, panel, moment, k_max, block):
+    """Add the far series of panel p, k_max terms, to W = Qx - i Qy (block rows 0, 1) at points px, py (n,).
+
+    Block row 2 holds the squared distances from the middle of the panel; points nearer than NEAR are left out.
+    """
+    re, im, d2, b1, b2, tr, s, r, inv = (
+        block[0],
+        block[1],
+        block[2],
+        block[3],
+        block[4],
+        block[5],
+        block[6],
+        block[7],
+        block[8],
+    )
+    cx, cy, hx, hy = panel[p, 4], panel[p, 5], panel[p, 6], panel[p, 7]
+    h2 = hx * hx + hy * hy
+    limit = NEAR2 * h2
+    for i in range(n):
+        v = 1.0 / d2[i] if d2[i] > limit else 0.0
+        t = (hx * (px[i] - cx) + hy * (py[i] - cy)) * v
+        inv[i] = v
+        tr[i] = t
+        s[i] = 2.0 * t
+        r[i] = h2 * v
+        b1[i] = 0.0
+        b2[i] = 0.0
+    for k in range(k_max - 1, 0, -1):  # Goertzel's scheme for real coefficients
+        m = moment[p, k]
+        for i in range(n):
+            b0 = (m - r[i] * b2[i]) + s[i] * b1[i]
+            b2[i] = b1[i]
+            b1[i] = b0
+    m0 = moment[p, 0]
+    for i in range(n):
+        dx = px[i] - cx
+        dy = py[i] - cy
+        sr = m0 + tr[i] * b1[i] - r[i] * b2[i]
+        si = (hy * dx - hx * dy) * inv[i] * b1[i]
+        re[i] -= (sr * dx + si * dy) * inv[i]
+        im[i] -= (si * dx - sr * dy) * inv[i]
+
+
+@kernel
+def panel_discharges(px, py, n, p, panel, kind, n_coef, coef, moment, block, work):
+    """Add W = Qx - i Qy (m2/d) of panel p as a sink to block rows 0 and 1 at points px, py (n,)."""
+    d2 = block[2]
+    cx, cy, hx, hy = panel[p, 4], panel[p, 5], panel[p, 6], panel[p, 7]
+    h2 = hx * hx + hy * hy
+    limit = NEAR2 * h2
+    nearest_far = np.inf
+    near = 0
+    for i in range(n):
+        dx = px[i] - cx
+        dy = py[i] - cy
+        d = dx * dx + dy * dy
+        d2[i] = d
+        close = d <= limit
+        near += 1 if close else 0
+        nearest_far = min(nearest_far, np.inf if close else d)
+    if near < n:
+        far_discharges(px, py, n, p, panel, moment, far_terms(nearest_far / h2), block)
+    if near > 0:
+        for i in range(n):
+            if d2[i] <= limit:
+                a, b = near_discharge(px[i], py[i], p, panel, kind, n_coef, coef, work)
+                block[0, i] += a
+                block[1, i] += b
+
+
+@kernel
+def ring_at(x, y, r, ring, ring_start, ring_moment, edge, log_scale):
+    """Potential (m3/d) and discharge (m2/d) of recharge ring r; what the caller drops, the compiler leaves out."""
+    dx = x - ring[r, 0]
+    dy = y - ring[r, 1]
+    radius = ring[r, 2]
+    rate = ring[r, 3] / (2.0 * np.pi)
+    if rate == 0.0:
+        return 0.0, 0.0, 0.0
+    d2 = dx * dx + dy * dy
+    z2 = d2 / (radius * radius)
+    if z2 > FAR_RING2:
+        inv = complex(dx, -dy) / d2
+        t = radius * inv
+        total = 0.0j
+        logs = 0.0j
+        for k in range(far_terms(z2) - 1, 0, -1):
+            m = ring_moment[r, k]
+            total = (total + m) * t
+            logs = (logs + m / k) * t
+        w = rate * inv * (ring_moment[r, 0] + total)
+        return -rate * (ring[r, 4] * (0.5 * np.log(d2) - log_scale) - logs.real), w.real, -w.imag
+    phi = rate * ring[r, 4] * log_scale
     qx = 0.0
     qy = 0.0
-    for r in range(ring.shape[0]):
-        dx = x - ring[r, 0]
-        dy = y - ring[r, 1]
-        radius = ring[r, 2]
-        rate = ring[r, 3] / (2.0 * np.pi)
-        if rate == 0.0:
-            continue
-        d2 = dx * dx + dy * dy
-        z2 = d2 / (radius * radius)
-        if z2 > FAR_RING2:
-            inv = complex(dx, -dy) / d2
-            t = radius * inv
-            total = 0.0j
-            logs = 0.0j
-            for k in range(far_terms(z2) - 1, 0, -1):
-                m = ring_moment[r, k]
-                total = (total + m) * t
-                logs = (logs + m / k) * t
-            w = rate * inv * (ring_moment[r, 0] + total)
-            qx += w.real
-            qy -= w.imag
-            phi -= rate * (ring[r, 4] * (0.5 * np.log(d2) - log_scale) - logs.real)
-            continue
-        first = ring_start[r]
-        log1 = log_distance2(x, y, edge[first, 0], edge[first, 1])
-        for e in range(first, ring_start[r + 1]):
-            log2 = log_distance2(x, y, edge[e, 2], edge[e, 3])
-            integral, d = edge_log_integral(x, y, edge, e, log1, log2)
-            log1 = log2
-            qx -= rate * edge[e, 5] * integral
-            qy += rate * edge[e, 4] * integral
-            phi -= rate * d * (0.5 * integral - 0.25 * edge[e, 6])
-        phi += rate * ring[r, 4] * log_scale
+    first = ring_start[r]
+    log1 = log_distance2(x, y, edge[first, 0], edge[first, 1])
+    for e in range(first, ring_start[r + 1]):
+        log2 = log_distance2(x, y, edge[e, 2], edge[e, 3])
+        integral, d = edge_log_integral(x, y, edge, e, log1, log2)
+        log1 = log2
+        qx -= rate * edge[e, 5] * integral
+        qy += rate * edge[e, 4] * integral
+        phi -= rate * d * (0.5 * integral - 0.25 * edge[e, 6])
     return phi, qx, qy
 
 
 @kernel
+def ring_covers(x, y, r, f):
+    """Recharge rate (m/d) that ring r brings to the point (a hole counts negative)."""
+    crossings = 0
+    for e in range(f.ring_start[r], f.ring_start[r + 1]):
+        crossings += inside_ring_crossings(x, y, f.edge[e, 0], f.edge[e, 1], f.edge[e, 2], f.edge[e, 3])
+    if crossings % 2 == 0:
+        return 0.0
+    return f.ring[r, 3] if f.ring[r, 4] > 0.0 else -f.ring[r, 3]
+
+
+@kernel
 def recharge_at(x, y, f):
-    """Recharge rate (m/d) at the point: the sum over the rings that hold it (holes count negative)."""
+    """Recharge rate (m/d) at the point: the sum over the rings that hold it."""
     rate = 0.0
     for r in range(f.ring.shape[0]):
-        crossings = 0
-        for e in range(f.ring_start[r], f.ring_start[r + 1]):
-            crossings += inside_ring_crossings(x, y, f.edge[e, 0], f.edge[e, 1], f.edge[e, 2], f.edge[e, 3])
-        if crossings % 2 == 1:
-            rate += f.ring[r, 3] if f.ring[r, 4] > 0.0 else -f.ring[r, 3]
+        rate += ring_covers(x, y, r, f)
     return rate
 
 
@@ -159,42 +235,10 @@ def potential_at(x, y, f, work):
         else:
             re, im = near_panel_potential(x, y, p, panel, kind, n_coef, coef, u[5], work)
             phi += re if vortex[p] == 0 else im + jump[p] * constant_doublet(x, y, panel, p)
-    area, _, _ = rings_at(x, y, f.ring, f.ring_start, f.ring_moment, f.edge, u[5])
-    return phi + area
-
-
-@kernel
-def discharge_at(x, y, f, work):
-    """Discharge vector Qx, Qy (m2/d) at a point in local coordinates (m)."""
-    u = f.uniform
-    qx = u[0]
-    qy = u[1]
-    wells = f.wells
-    for w in range(wells.shape[0]):
-        a, b = discharge_well(x - wells[w, 0], y - wells[w, 1], wells[w, 2], wells[w, 3])
-        qx += a
-        qy += b
-    # the arrays by name: a call with the whole field would copy it for every panel
-    panel, kind, vortex, n_coef, coef, moment = f.panel, f.kind, f.vortex, f.n_coef, f.coef, f.moment
-    for p in range(kind.shape[0]):
-        dx, dy, hx, hy, d2, h2 = from_middle(x, y, panel, p)
-        if d2 > NEAR2 * h2:
-            inv = 1.0 / d2
-            tr = (hx * dx + hy * dy) * inv
-            ti = (hy * dx - hx * dy) * inv
-            sr, si = far_series(moment, p, far_terms(d2 / h2), tr, ti)
-            a = -(sr * dx + si * dy) * inv
-            b = -(si * dx - sr * dy) * inv
-        else:
-            a, b = near_discharge(x, y, p, panel, kind, n_coef, coef, work)
-        if vortex[p] == 0:
-            qx += a
-            qy -= b
-        else:  # times -i: W = b - i a
-            qx += b
-            qy += a
-    _, a, b = rings_at(x, y, f.ring, f.ring_start, f.ring_moment, f.edge, u[5])
-    return qx + a, qy + b
+    for r in range(f.ring.shape[0]):
+        area, _, _ = ring_at(x, y, r, f.ring, f.ring_start, f.ring_moment, f.edge, u[5])
+        phi += area
+    return phi
 
 
 @kernel
@@ -227,10 +271,42 @@ def potentials(x, y, f, out):
 
 @driver
 def discharges(x, y, f, qx, qy):
-    """Discharge vector at points x, y (n,) into qx, qy (n,)."""
+    """Discharge vector at points x, y (n,) into qx, qy (n,).
+
+    Points in blocks with the panels outside: the loops over a block have no branch, and the compiler makes vectors
+    of them. The nearest point of a block sets how many terms of a far series all of it takes.
+    """
     work = np.empty((2, N_WORK), np.complex128)
-    for i in range(x.size):
-        qx[i], qy[i] = discharge_at(x[i], y[i], f, work)
+    block = np.empty((N_BLOCK_ROWS, BLOCK))
+    u, wells = f.uniform, f.wells
+    panel, kind, vortex, n_coef, coef, moment = f.panel, f.kind, f.vortex, f.n_coef, f.coef, f.moment
+    for start in range(0, x.size, BLOCK):
+        n = min(BLOCK, x.size - start)
+        px = x[start : start + n]
+        py = y[start : start + n]
+        for turn in range(2):  # sinks, then vortices, whose W is that of sinks times -i
+            for i in range(n):
+                block[0, i] = 0.0
+                block[1, i] = 0.0
+            for p in range(kind.size):
+                if vortex[p] == turn:
+                    panel_discharges(px, py, n, p, panel, kind, n_coef, coef, moment, block, work)
+            for i in range(n):
+                if turn == 0:
+                    qx[start + i] = u[0] + block[0, i]
+                    qy[start + i] = u[1] - block[1, i]
+                else:
+                    qx[start + i] += block[1, i]
+                    qy[start + i] += block[0, i]
+        for i in range(n):
+            for w in range(wells.shape[0]):
+                a, b = discharge_well(px[i] - wells[w, 0], py[i] - wells[w, 1], wells[w, 2], wells[w, 3])
+                qx[start + i] += a
+                qy[start + i] += b
+            for r in range(f.ring.shape[0]):
+                _, a, b = ring_at(px[i], py[i], r, f.ring, f.ring_start, f.ring_moment, f.edge, u[5])
+                qx[start + i] += a
+                qy[start + i] += b
 
 
 @driver

@@ -12,9 +12,11 @@ from ..solver.boundary import Solution
 from ..solver.fit import FitResult
 from ..solver.prediction import leave_one_out
 from .building import Model, build
+from .case_map import case_map
 from .cases import CaseAnswer, fitted_scenario, solve_case
 from .context import BASE, Check, Context, Result
 from .fitting import Fitted, fit_scenario
+from .map_content import MapContent
 from .messages import InputError, Problem
 from .questions import question_module
 from .routing import least_flow
@@ -28,13 +30,17 @@ ROUND_CLOSED = 1e-4  # the same by quadrature of the flow round the whole site
 
 @dataclass(frozen=True)
 class Answers:
-    """Everything that a run found. ``flow`` is the fitted field; ``to_json`` gives the content of answers.json."""
+    """Everything that a run found, ``maps`` by case.
+
+    ``flow`` is the fitted field; ``to_json`` gives the content of answers.json.
+    """
 
     scenario: Scenario
     model: Model
     fitted: Fitted
     cases: dict[str, CaseAnswer]
     results: tuple[Result, ...]
+    maps: dict[str, MapContent]
     checks: tuple[Check, ...]
     notes: tuple[str, ...]
 
@@ -97,9 +103,15 @@ def _foretold(result: FitResult, n_levels: int) -> dict[str, float] | None:
     return {"field_rmse": rms[0], "predicted_rmse": rms[1]}
 
 
-def answer(scenario: Scenario, *, progress: Callable[[str], None] | None = None) -> Answers:
+def answer(
+    scenario: Scenario,
+    *,
+    progress: Callable[[str], None] | None = None,
+    map_done: Callable[[str, MapContent], None] | None = None,
+) -> Answers:
     """Answer every question of a scenario.
 
+    progress: told what is being done; map_done: given the map of each case, by its name, as soon as it is complete.
     Raises InputError for geometry that cannot stand and NotSolvedError where the numbers do not fix a field.
     """
     say = progress or (lambda _: None)
@@ -113,18 +125,26 @@ def answer(scenario: Scenario, *, progress: Callable[[str], None] | None = None)
         say(f"solving case {case.name}")
         cases[case.name] = solve_case(scenario, model, fitted, case)
     context = Context(scenario, fitted, cases, say)
-    results: list[Result] = []
-    for question in scenario.questions:
-        results += question_module(question.kind).answer(question.options, context)
-    checks = [check for case in cases.values() for check in _field_checks(case)]
-    known = {
-        BASE: fitted_scenario(scenario, model, fitted),
-        **{c.name: c.scenario for c in cases.values() if c.name != BASE},
-    }
-    checks += [check for name, case in cases.items() for check in _stream_checks(known[name], case)]
-    checks += [check for result in results for check in result.checks]
+    answered: list[list[Result]] = [[] for _ in scenario.questions]
+    checks: list[Check] = []
+    maps: dict[str, MapContent] = {}
+    for solved in cases.values():
+        own = [*_field_checks(solved), *_stream_checks(scenario, model, fitted, solved)]
+        asked: list[Result] = []
+        for k, question in enumerate(scenario.questions):
+            if solved.name == BASE or solved.name in question.options.cases:
+                found = question_module(question.kind).answer(question.options, solved, context)
+                answered[k] += found
+                asked += found
+        own += [check for result in asked for check in result.checks]
+        checks += own
+        if solved.name == BASE or asked:
+            maps[solved.name] = case_map(solved, scenario, model, fitted, asked, checks if solved.name == BASE else own)
+            if map_done is not None:
+                map_done(solved.name, maps[solved.name])
+    results = tuple(result for found in answered for result in found)
     notes = (*scenario.notes, *model.notes, *fitted.solution.boundary.notes)
-    return Answers(scenario, model, fitted, cases, tuple(results), tuple(checks), notes)
+    return Answers(scenario, model, fitted, cases, results, maps, tuple(checks), notes)
 
 
 def balance_list(solution: Solution) -> list[dict[str, Any]]:
@@ -151,8 +171,9 @@ def _field_checks(case: CaseAnswer) -> list[Check]:
     ]  # fmt: skip
 
 
-def _stream_checks(scenario: Scenario, case: CaseAnswer) -> list[Check]:
+def _stream_checks(base: Scenario, model: Model, fitted: Fitted, case: CaseAnswer) -> list[Check]:
     """No stream whose source is stated gives the ground more water than it carries."""
+    scenario = fitted_scenario(base, model, fitted) if case.name == BASE else case.scenario
     out = []
     for stream in scenario.streams:
         found = least_flow(scenario, case.solution, stream.name)

@@ -8,7 +8,7 @@ import shapely
 
 from ..tracing.endings import Ending
 from ..tracing.obstacles import Obstacles
-from ..tracing.pathlines import trace
+from ..tracing.pathlines import series_of, trace
 from ..tracing.stagnation import StagnationPoint, stagnation_points
 from ..tracing.zones import MOST_PATHS, CaptureZone, TimeZone, capture_zone
 from .cases import CaseAnswer
@@ -28,6 +28,7 @@ def zones_of(case: CaseAnswer, context: Context, options: Any) -> list[Result]:
     obstacles = obstacles_of(case)
     saddles = [p for p in stagnation_points(case.solution.flow, obstacles_of(case, 0.25)) if p.kind == "saddle"]
     reached = _reached(case, saddles, obstacles)
+    tree = series_of(case.solution.flow, obstacles)
     taken: set[str] = set()
     out = []
     for well in wells:
@@ -35,7 +36,7 @@ def zones_of(case: CaseAnswer, context: Context, options: Any) -> list[Result]:
         index = [w.name for w in case.model.places.wells].index(well.name)
         lows, highs = _porosity_times(case, options.times)
         times = sorted({*options.times, *lows, *highs})
-        zone = capture_zone(case.solution.flow, index, obstacles, times, drawn_area(case.scenario))
+        zone = capture_zone(case.solution.flow, index, obstacles, times, drawn_area(case.scenario), tree)
         mine = [s for s, names in zip(saddles, reached, strict=True) if index in names]
         stem = safe_file_name(f"{case.name}_{well.name}", taken)
         taken.add(stem)

@@ -1,5 +1,6 @@
 """The command line: run, check, start, schema. Heavy packages are imported inside the commands."""
 
+import gc
 import os
 import sys
 from enum import StrEnum
@@ -15,6 +16,8 @@ os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
 ANSWERED, FAILED_CHECK, WRONG_INPUT, OUR_FAULT, STOPPED = 0, 1, 2, 3, 130
 # errors of other rooms by name, since their modules are heavy to import; with the rule that is printed
 _KNOWN = {"GeometryError": "geometry", "NotSolvedError": "not-solved", "WritingError": "answers-folder"}
+
+RARELY = (100_000, 20, 20)  # a short program makes little garbage; looking for it took a tenth of the time
 
 app = typer.Typer(
     add_completion=False, no_args_is_help=True, pretty_exceptions_enable=False, rich_markup_mode=None,
@@ -68,13 +71,15 @@ def run(
     problem = _no_room(folder)
     if problem is not None:
         raise InputError([problem])
-    from .answering import answer, report_lines
-    from .writing import write
+    from .desk import DrawingDesk
 
-    with _Progress() as progress:
-        answers = answer(read, progress=progress)
-        progress("writing")
-        write(answers, folder, second_process=True)
+    with DrawingDesk() as desk, _Progress() as progress:
+        from .answering import answer, report_lines
+        from .writing import write
+
+        answers = answer(read, progress=progress, map_done=desk.take)
+        progress("drawing and writing")
+        write(answers, folder, desk)
     for line in report_lines(answers):
         typer.echo(line)
     typer.echo(f"answers in {folder}")
@@ -182,6 +187,17 @@ def main(arguments: list[str] | None = None) -> None:
     if code == STOPPED:
         typer.echo("stopped; earlier answers are as they were", err=True)
     sys.exit(code or ANSWERED)
+
+
+def entry() -> None:
+    """The command ``wellshed``. Ends the process at once: tearing down the compiler would take half a second."""
+    gc.set_threshold(*RARELY)
+    try:
+        main()
+    except SystemExit as end:
+        sys.stdout.flush()
+        sys.stderr.flush()
+        os._exit(end.code if isinstance(end.code, int) else OUR_FAULT)
 
 
 def _failed(error: Exception, given: list[str]) -> int:

@@ -62,10 +62,6 @@ class Context:
     cases: dict[str, CaseAnswer]
     progress: Progress = lambda _: None
 
-    def asked(self, names: list[str]) -> list[CaseAnswer]:
-        """The base and the named cases, in that order."""
-        return [self.cases[BASE], *(self.cases[name] for name in names)]
-
 
 def drawn_area(scenario: Scenario) -> shapely.Geometry:
     """The drawn box as a polygon (m)."""

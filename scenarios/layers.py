@@ -33,7 +33,9 @@ def _feature(row: Row) -> dict[str, Any]:
     shape = row.geometry
     geometry = None
     if shape is not None and not shape.is_empty:
-        shape = shapely.set_precision(_oriented(shape), 10.0**-DECIMALS, mode="pointwise")
+        if isinstance(shape, shapely.Polygon | shapely.MultiPolygon):
+            shape = shapely.set_precision(shape, 10.0**-DECIMALS)  # rounding alone can make a ring cross itself
+        shape = _oriented(shape)
         geometry = _rounded(shapely.geometry.mapping(shape))
     return {"type": "Feature", "properties": {k: plain(v) for k, v in row.columns.items()}, "geometry": geometry}
 

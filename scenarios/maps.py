@@ -38,6 +38,7 @@ def draw_map(content: MapContent) -> Figure:
         figure = Figure(dpi=200)
         canvas = FigureCanvasAgg(figure)
         axes = figure.add_axes((0.1, 0.3, 0.8, 0.6))
+        axes.set_autoscale_on(False)
         handles = _ground(axes, content)
         handles += _waters(axes, content)
         handles += _zones(axes, content)
@@ -165,12 +166,12 @@ def _zones(axes: Axes, content: MapContent) -> list[Any]:
         if not zone.rings:
             continue
         if zone.days is None:
-            axes.add_patch(PathPatch(_compound(zone), fill=False, hatch="///", ec="#00000055", lw=0, zorder=6))
-            axes.add_patch(PathPatch(_compound(zone), fill=False, ec=INK, lw=1.9, joinstyle="round", zorder=7))
+            axes.add_artist(PathPatch(_compound(zone), fill=False, hatch="///", ec="#00000055", lw=0, zorder=6))
+            axes.add_artist(PathPatch(_compound(zone), fill=False, ec=INK, lw=1.9, joinstyle="round", zorder=7))
         else:
             style = TIMES[times.index(zone.days) % len(TIMES)]
-            axes.add_patch(PathPatch(_compound(zone), fill=False, ec="white", lw=2.6, joinstyle="round", zorder=7))
-            axes.add_patch(PathPatch(_compound(zone), fill=False, ec="#7b1e3a", lw=1.4, ls=style, zorder=8))
+            axes.add_artist(PathPatch(_compound(zone), fill=False, ec="white", lw=2.6, joinstyle="round", zorder=7))
+            axes.add_artist(PathPatch(_compound(zone), fill=False, ec="#7b1e3a", lw=1.4, ls=style, zorder=8))
     if any(z.days is None for z in content.zones):
         words = "capture zone: some water, at some depth, goes to the well"
         handles.append(Patch(fill=False, hatch="////", ec=INK, lw=1.6, label=words))

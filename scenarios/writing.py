@@ -8,7 +8,7 @@ import shapely
 
 from .answering import Answers
 from .context import BASE, Row
-from .drawing import map_of, save_maps
+from .desk import KINDS, DrawingDesk
 from .layers import layer_text, plain
 from .names import safe_file_name
 from .summary import parameter_rows, residual_rows
@@ -18,15 +18,15 @@ from .tables import table_text
 __all__ = ["WritingError", "write"]
 
 
-def write(answers: Answers, folder: Path, second_process: bool = False) -> None:
+def write(answers: Answers, folder: Path, desk: DrawingDesk | None = None) -> None:
     """Write all answers to a folder, whole or not at all; raises WritingError.
 
-    second_process: draw the cases' maps in a forked process (see ``save_maps``); not from a program with threads.
+    desk: where the maps are being drawn; without one they are drawn here.
     """
-    write_folder(folder, lambda fresh: _produce(answers, fresh, second_process))
+    write_folder(folder, lambda fresh: _produce(answers, fresh, desk))
 
 
-def _produce(answers: Answers, folder: Path, second_process: bool) -> None:
+def _produce(answers: Answers, folder: Path, desk: DrawingDesk | None) -> None:
     content = json.dumps(_plain_all(answers.to_json()), indent=2, ensure_ascii=False, allow_nan=False)
     _text(folder / "answers.json", content + "\n")
     crs = answers.scenario.site.crs
@@ -38,15 +38,18 @@ def _produce(answers: Answers, folder: Path, second_process: bool) -> None:
             _text(folder / name, layer_text(Path(name).stem, [row], crs))
     for name, table in _tables(answers).items():
         _text(folder / f"{name}.csv", table_text(table))
-    taken: set[str] = set()
-    maps = []
-    for case in answers.cases:
-        if case != BASE and all(r.case != case for r in answers.results):
-            continue
-        stem = "map" if case == BASE else safe_file_name(f"map_{case}", {*taken, "map"})
+    taken = {"map"}
+    for case, files in (_drawn(answers) if desk is None else desk.drawings()).items():
+        stem = "map" if case == BASE else safe_file_name(f"map_{case}", taken)
         taken.add(stem)
-        maps.append((map_of(answers, case), folder / stem))
-    save_maps(maps, second_process)
+        for kind, drawing in files.items():
+            (folder / f"{stem}.{kind}").write_bytes(drawing)
+
+
+def _drawn(answers: Answers) -> dict[str, dict[str, bytes]]:
+    from .drawing import draw
+
+    return {case: {kind: draw(content, kind) for kind in KINDS} for case, content in answers.maps.items()}
 
 
 def _text(path: Path, text: str) -> None:

@@ -10,8 +10,8 @@ Coefficients: Dormand & Prince (1980); dense output of order 4: Shampine (1986).
 import numpy as np
 
 from ..elements.jit import driver, kernel
-from ..elements.kernels_field import discharge_at, recharge_at
 from ..elements.kernels_line import N_WORK
+from ..elements.kernels_local import flow_at, local_flow_at
 from .endings import Ending
 from .obstacles import WALL
 
@@ -124,7 +124,7 @@ def before_wall(x0, y0, x1, y1, segment):
 
 
 @kernel
-def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks, points, share, work):
+def follow(x, y, phi, sign, tree, medium, obstacles, t_max, tol, q_rest, marks, at_marks, points, share, work):
     """Follow one particle from x, y (local m) where the potential is phi (m3/d), sign +1 with the flow, -1 against it.
 
     medium: conductivity, full thickness, porosity. marks (k,): ascending times (d) whose positions go into
@@ -134,6 +134,7 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
     names (-1 none), and steps tried.
     """
     conductivity, full, porosity = medium[0], medium[1], medium[2]
+    wells = tree.wells
     rate = np.empty((7, 3))
     t = 0.0
     n_points = 1
@@ -154,8 +155,9 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
     crawl = -1  # short steps in a row since the particle last slid along a wall, -1 before it ever did
     box = obstacles.box
     size = max(box[1] - box[0], box[3] - box[2])
-    recharged = f.ring.shape[0] > 0
-    infiltration = recharge_at(x, y, f) if recharged else 0.0
+    recharged = tree.edge.shape[0] > 0
+    recharge = 0.0
+    infiltration = 0.0
     while reason == 0:
         n_tried += 1
         if n_points >= points.shape[0] - 1 or redo > MOST_REDO:
@@ -172,7 +174,9 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
                 sx += h * A[stage, j] * rate[j, 0]
                 sy += h * A[stage, j] * rate[j, 1]
                 sp += h * A[stage, j] * rate[j, 2]
-            qx, qy = discharge_at(sx, sy, f, work)
+            qx, qy, recharge = local_flow_at(sx, sy, tree, work)
+            if stage == 0:
+                infiltration = recharge
             slow = porosity * _thickness(sp, conductivity, full)
             if slow <= 0.0:
                 bad = DRY
@@ -188,9 +192,9 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
                 if h == 0.0:
                     h = 1e-4 * size / speed
                 reach = 0.05 * size
-                for w in range(f.wells.shape[0]):
-                    gap = np.sqrt((x - f.wells[w, 0]) ** 2 + (y - f.wells[w, 1]) ** 2)
-                    reach = min(reach, max(0.5 * gap, 0.5 * f.wells[w, 3]))
+                for w in range(wells.shape[0]):
+                    gap = np.sqrt((x - wells[w, 0]) ** 2 + (y - wells[w, 1]) ** 2)
+                    reach = min(reach, max(0.5 * gap, 0.5 * wells[w, 3]))
                 h = min(h, reach / speed, t_max - t)
         if bad != 0:
             if bad == STAGNATION or not fresh or h * speed < 1e-6:
@@ -274,7 +278,7 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
             leaving = 0.0
             for side in range(2):  # one call in the code: it is what takes long to compile
                 away = (2 * side - 1) * ASIDE
-                bank_x, bank_y = discharge_at(px + away * nx, py + away * ny, f, work)
+                bank_x, bank_y, _ = flow_at(px + away * nx, py + away * ny, tree, work)
                 if side == 0:
                     arriving = sign * (bank_x * nx + bank_y * ny)
                 else:
@@ -309,17 +313,16 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
             at_marks[next_mark, 1] = y + my
             next_mark += 1
         if recharged:
-            new_infiltration = recharge_at(x_new, y_new, f)
             slow = porosity * 0.5 * (_thickness(phi, conductivity, full) + _thickness(phi_new, conductivity, full))
-            left *= np.exp(-0.5 * (infiltration + new_infiltration) * h / slow)
-            infiltration = new_infiltration
+            left *= np.exp(-0.5 * (infiltration + recharge) * h / slow)
+            infiltration = recharge
             if sign < 0.0 and left < SPENT:
                 reason = STAGNATION
-        for w in range(f.wells.shape[0]):
-            r2 = (x_new - f.wells[w, 0]) ** 2 + (y_new - f.wells[w, 1]) ** 2
-            radius2 = f.wells[w, 3] ** 2
-            if r2 <= radius2 and sign * f.wells[w, 2] > 0.0:
-                r0 = (x - f.wells[w, 0]) ** 2 + (y - f.wells[w, 1]) ** 2
+        for w in range(wells.shape[0]):
+            r2 = (x_new - wells[w, 0]) ** 2 + (y_new - wells[w, 1]) ** 2
+            radius2 = wells[w, 3] ** 2
+            if r2 <= radius2 and sign * wells[w, 2] > 0.0:
+                r0 = (x - wells[w, 0]) ** 2 + (y - wells[w, 1]) ** 2
                 s = min(max((r0 - radius2) / (r0 - r2), 0.0), 1.0) if r0 > r2 else 1.0  # r^2 falls evenly near a well
                 x_new = x + s * (x_new - x)
                 y_new = y + s * (y_new - y)
@@ -370,9 +373,9 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
         if reason == 0 and speed * porosity * _thickness(phi, conductivity, full) <= q_rest:
             reason = STAGNATION
         reach = 0.05 * size
-        for w in range(f.wells.shape[0]):
-            gap = np.sqrt((x - f.wells[w, 0]) ** 2 + (y - f.wells[w, 1]) ** 2)
-            reach = min(reach, max(0.5 * gap, 0.5 * f.wells[w, 3]))
+        for w in range(wells.shape[0]):
+            gap = np.sqrt((x - wells[w, 0]) ** 2 + (y - wells[w, 1]) ** 2)
+            reach = min(reach, max(0.5 * gap, 0.5 * wells[w, 3]))
         if reason == 0:
             h = min(h * grow, reach / speed, t_max - t)
     while next_mark < marks.size:
@@ -384,7 +387,7 @@ def follow(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_
 
 
 @driver
-def follow_all(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks, at_marks, points, share, result):
+def follow_all(x, y, phi, sign, tree, medium, obstacles, t_max, tol, q_rest, marks, at_marks, points, share, result):
     """Follow particles x, y (n,); outputs as in ``follow`` with a first axis n; result (n, 4) its return values."""
     work = np.empty((2, N_WORK), np.complex128)
     for i in range(x.size):
@@ -393,7 +396,7 @@ def follow_all(x, y, phi, sign, f, medium, obstacles, t_max, tol, q_rest, marks,
             y[i],
             phi[i],
             sign,
-            f,
+            tree,
             medium,
             obstacles,
             t_max,

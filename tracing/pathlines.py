@@ -8,6 +8,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from ..elements.blocks import in_blocks
 from ..elements.flow_field import FlowField
+from ..elements.local_arrays import DEEPEST, LocalArrays, local_arrays
 from .endings import Ending
 from .integrator import follow_all
 from .obstacles import Line, Obstacles, make_obstacles
@@ -16,6 +17,7 @@ TOLERANCE = 1e-5  # m of position a step; a relative one would mean nothing on m
 MOST_POINTS = 6000
 CHUNK = 192
 FEW = 4  # particles: fewer are followed by one thread
+MANY = 200  # particles: for as many a tree of series pays
 REST = 1e-7  # of the typical discharge: slower water has come to rest
 
 Floats = NDArray[np.float64]
@@ -64,9 +66,11 @@ def trace(
     times: ArrayLike = (),
     tolerance: float = TOLERANCE,
     most_points: int = MOST_POINTS,
+    tree: LocalArrays | None = None,
 ) -> Pathlines:
     """Follow water from x, y (n,) in m for at most t_max (d); direction +1 with the flow, -1 against it.
 
+    tree: the field's series in the box, where it is traced often (``series_of``); made here if many start.
     lines: the streams, lakes and outlines at which water can end, or prepared obstacles; box: x0, x1, y0, y1 (m)
     within which water is followed (needed unless obstacles are given); times (k,): ascending (d), at which places
     are wanted. A stream ends a pathline where its other bank sends water towards it too; else some water passes.
@@ -84,10 +88,11 @@ def trace(
     phi = np.ascontiguousarray(flow.potential(local_x + flow.origin[0], local_y + flow.origin[1]))
     marks = np.ascontiguousarray(np.atleast_1d(np.asarray(times, dtype=float)))
     arrays = obstacles.arrays(flow.origin)
+    n, n_lines = local_x.size, len(obstacles.names)
+    field = tree or series_of(flow, obstacles, DEEPEST if n >= MANY else 0)
     aquifer = flow.aquifer
     medium = np.array([aquifer.conductivity, aquifer.thickness, aquifer.porosity])
     q_rest = REST * typical_discharge(flow, obstacles.box)
-    n, n_lines = local_x.size, len(obstacles.names)
     at_marks, share = np.zeros((n, marks.size, 2)), np.zeros((n, n_lines + 1))
     result = np.zeros((n, 4), dtype=np.int64)
     points: list[Floats] = []
@@ -98,7 +103,7 @@ def trace(
         def work(part: slice, start: int = start) -> None:
             at = slice(start + part.start, start + part.stop)
             follow_all(
-                local_x[at], local_y[at], phi[at], float(direction), flow.arrays, medium, arrays, float(t_max),
+                local_x[at], local_y[at], phi[at], float(direction), field, medium, arrays, float(t_max),
                 float(tolerance), q_rest, marks, at_marks[at], buffer[part], share[at], result[at],
             )  # fmt: skip
 
@@ -110,6 +115,12 @@ def trace(
             points.append(path)
     at_marks += np.array(flow.origin)
     return Pathlines(points, result[:, 1], result[:, 2], marks, at_marks, share, result[:, 3], obstacles.names)
+
+
+def series_of(flow: FlowField, obstacles: Obstacles, deepest: int = DEEPEST) -> LocalArrays:
+    """Tree of series for following much water within the obstacles' box; ``deepest`` 0 is direct summation."""
+    x0, x1, y0, y1 = (float(c) for c in obstacles.arrays(flow.origin).box)
+    return local_arrays(flow.arrays, (x0, x1, y0, y1), deepest)
 
 
 def typical_discharge(flow: FlowField, box: tuple[float, float, float, float]) -> float:

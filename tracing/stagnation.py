@@ -50,8 +50,8 @@ def stagnation_points(flow: FlowField, obstacles: Obstacles, n_grid: int = 90) -
                 seeds.append(
                     np.stack([wx + f * r * np.cos(angles), wy + f * r * np.sin(angles)], axis=1) + np.array(flow.origin)
                 )
-    start = np.concatenate(seeds)
-    found = _newton(flow, start, typical, 0.02 * max(x1 - x0, y1 - y0))
+    start = _in_ground(np.concatenate(seeds), obstacles)  # within a lake there is no flow, only rounding
+    found = _newton(flow, start, typical, obstacles.box)
     out: list[StagnationPoint] = []
     wells = flow.arrays.wells[:, :2] + np.array(flow.origin)
     for place in _in_ground(found, obstacles):
@@ -78,11 +78,15 @@ def _slopes(flow: FlowField, place: Floats, h: float) -> Floats:
     return np.stack([(q[:, 0] - q[:, 1]) / (2 * h), (q[:, 2] - q[:, 3]) / (2 * h)], axis=-1).transpose(1, 0, 2)
 
 
-def _newton(flow: FlowField, place: Floats, typical: float, most_step: float) -> Floats:
+def _newton(flow: FlowField, place: Floats, typical: float, box: tuple[float, float, float, float]) -> Floats:
+    """Zeros that Newton's method finds from places (n, 2); a place that leaves the box is given up."""
     place = place.copy()
+    x0, x1, y0, y1 = box
+    most_step = 0.02 * max(x1 - x0, y1 - y0)
     done = np.zeros(len(place), dtype=bool)
     for _ in range(25):
-        active = np.flatnonzero(~done)
+        inside = (place[:, 0] >= x0) & (place[:, 0] <= x1) & (place[:, 1] >= y0) & (place[:, 1] <= y1)
+        active = np.flatnonzero(~done & inside)
         if active.size == 0:
             break
         q = np.stack(flow.discharge(place[active, 0], place[active, 1]), axis=1)

@@ -15,9 +15,11 @@ import shapely
 from numpy.typing import NDArray
 
 from ..elements.flow_field import FlowField
+from ..elements.local_arrays import LocalArrays
+from .apart import farthest
 from .endings import Ending
 from .obstacles import Obstacles
-from .pathlines import Pathlines, trace
+from .pathlines import Pathlines, series_of, trace
 
 Floats = NDArray[np.float64]
 FIRST_PATHS = 144
@@ -66,12 +68,18 @@ class CaptureZone:
 
 
 def capture_zone(
-    flow: FlowField, well: int, obstacles: Obstacles, times: Sequence[float] = (), clip: shapely.Geometry | None = None
+    flow: FlowField,
+    well: int,
+    obstacles: Obstacles,
+    times: Sequence[float] = (),
+    clip: shapely.Geometry | None = None,
+    tree: LocalArrays | None = None,
 ) -> CaptureZone:
     """Zone of well number ``well`` of the field, and its time zones (d).
 
     obstacles: lines at which water can come from, and the box in which it is followed; clip: what the polygons are
-    cut to (the drawn area). Raises ValueError for a well that does not pump.
+    cut to (the drawn area); tree: ``series_of`` the field and the obstacles, if at hand.
+    Raises ValueError for a well that does not pump.
     """
     wx, wy, rate, radius = flow.arrays.wells[well]
     if rate <= 0.0:
@@ -80,7 +88,8 @@ def capture_zone(
     circle = radius * STRETCH
     marks = np.unique(np.asarray(times, dtype=float))
     angles = 2.0 * np.pi * (np.arange(FIRST_PATHS) + 0.5) / FIRST_PATHS
-    paths = _follow(flow, centre, circle, angles, obstacles, marks)
+    tree = series_of(flow, obstacles) if tree is None else tree
+    paths = _follow(flow, centre, circle, angles, obstacles, marks, tree)
     gaps: dict[tuple[float, float], tuple[float, float]] = {}
     while True:
         steps = _steps(angles)
@@ -93,7 +102,7 @@ def capture_zone(
         between = _between(angles, steps, wide & ~spent & ~apart, _stretched(paths) & (steps > PARTED))
         if between.size == 0 or angles.size > MOST_PATHS:
             break
-        more = _follow(flow, centre, circle, between, obstacles, marks)
+        more = _follow(flow, centre, circle, between, obstacles, marks, tree)
         angles, paths = _merged(angles, paths, between, more)
     whole = _polygon(paths, apart, spent, None)
     asked = []
@@ -112,10 +121,16 @@ def capture_zone(
 
 
 def _follow(
-    flow: FlowField, centre: Floats, circle: float, angles: Floats, obstacles: Obstacles, marks: Floats
+    flow: FlowField,
+    centre: Floats,
+    circle: float,
+    angles: Floats,
+    obstacles: Obstacles,
+    marks: Floats,
+    tree: LocalArrays,
 ) -> Pathlines:
     x, y = centre[0] + circle * np.cos(angles), centre[1] + circle * np.sin(angles)
-    return trace(flow, x, y, direction=-1, lines=obstacles, times=marks, tolerance=STEP_ERROR)
+    return trace(flow, x, y, direction=-1, lines=obstacles, times=marks, tolerance=STEP_ERROR, tree=tree)
 
 
 def _steps(angles: Floats) -> Floats:
@@ -135,16 +150,11 @@ def _gaps(
         j = (i + 1) % angles.size
         key = float(angles[i]), float(angles[j])
         if key not in known:
-            one, other = _farthest(paths.points[i], paths.points[j]), _farthest(paths.points[j], paths.points[i])
+            one = farthest(paths.points[i], paths.points[j], SAMPLES)
+            other = farthest(paths.points[j], paths.points[i], SAMPLES)
             known[key] = min(one, other), max(one, other)
         near[i], far[i] = known[key]
     return near, far
-
-
-def _farthest(path: Floats, other: Floats) -> float:
-    """Largest distance (m) of places evenly spread over the points of a path from another path."""
-    at = path[np.unique(np.linspace(0, len(path) - 1, SAMPLES).astype(int)), :2]
-    return float(shapely.distance(shapely.points(at), shapely.LineString(other[:, :2])).max())
 
 
 def _first_is_spent(paths: Pathlines) -> NDArray[np.bool_]:

@@ -1,7 +1,8 @@
 """The questions a scenario can ask, one module each.
 
-A question is a module of this package with a class ``Options`` (its keys in a scenario), a function
-``problems(options, scenario)`` that checks the options against the rest of the scenario, and a function ``answer``.
+A question is a module of this package with a class ``Options`` (its keys in a scenario, ``cases`` among them), a
+function ``problems(options, scenario)`` that checks the options against the rest of the scenario, and a function
+``answer(options, case, context)`` that is called for the base and for each of the asked cases.
 Module level imports stay light, since every check of a scenario loads all of them.
 """
 

@@ -11,6 +11,7 @@ from ..scenario import Scenario, WellInput
 from ._shared import Fault, Names, as_list, unknown_cases
 
 if TYPE_CHECKING:
+    from ..cases import CaseAnswer
     from ..context import Context, Result
 
 Days = Annotated[float, Plain("time", above=0.0)]
@@ -53,8 +54,8 @@ def _wells(options: Options, scenario: Scenario) -> list[WellInput]:
     return wells
 
 
-def answer(options: Options, context: "Context") -> "list[Result]":
-    """Zones of the asked wells in the base and in the asked cases."""
+def answer(options: Options, case: "CaseAnswer", context: "Context") -> "list[Result]":
+    """Zones of the asked wells in a case."""
     from ..capture import zones_of
 
-    return [result for case in context.asked(options.cases) for result in zones_of(case, context, options)]
+    return zones_of(case, context, options)

@@ -10,6 +10,7 @@ from ..scenario import Scenario
 from ._shared import Fault, Names, unknown_cases
 
 if TYPE_CHECKING:
+    from ..cases import CaseAnswer
     from ..context import Context, Result
 
 
@@ -31,8 +32,8 @@ def problems(options: Options, scenario: Scenario) -> list[Fault]:
     return unknown_cases(options.cases, scenario)
 
 
-def answer(options: Options, context: "Context") -> "list[Result]":
-    """The water table of the base and of the asked cases."""
+def answer(options: Options, case: "CaseAnswer", context: "Context") -> "list[Result]":
+    """The water table of a case."""
     from ..water_table import water_table
 
-    return [water_table(case, context, options.interval) for case in context.asked(options.cases)]
+    return [water_table(case, context, options.interval)]

@@ -13,7 +13,7 @@ from wellshed.tracing.pathlines import trace
 
 
 @pytest.mark.parametrize("threads", [1, 2, 5])
-@pytest.mark.parametrize("n", [0, 1, 256, 257, 1000])
+@pytest.mark.parametrize("n", [0, 1, 1024, 1025, 4000])
 def test_every_point_is_worked_on_once(monkeypatch, threads, n):
     monkeypatch.setattr(numba.config, "NUMBA_NUM_THREADS", threads)
     seen = np.zeros(n, dtype=int)
@@ -33,7 +33,7 @@ def test_an_error_in_a_block_is_raised(monkeypatch):
             raise ZeroDivisionError
 
     with pytest.raises(ZeroDivisionError):
-        in_blocks(work, 500)
+        in_blocks(work, 5000)
 
 
 def test_one_thread_gives_the_bits_of_many(monkeypatch):

@@ -58,7 +58,7 @@ def test_check_says_what_it_found(tmp_path, capsys):
     assert "4 levels, 1 well, 1 stream, 1 lake, 1 recharge area, 1 case, 2 questions" in said
 
 
-def stand_in(monkeypatch, answer, write=lambda answers, folder, second_process: None):
+def stand_in(monkeypatch, answer, write=lambda answers, folder, desk: None):
     """Put answering and writing in the place of the real ones, which are tested elsewhere."""
     answering = SimpleNamespace(answer=answer, report_lines=lambda answers: ["a line of the report"])
     monkeypatch.setitem(sys.modules, "wellshed.scenarios.answering", answering)
@@ -75,7 +75,7 @@ def run(file, *more):
 def test_exit_code_tells_whether_the_checks_passed(tmp_path, monkeypatch, capsys, passed, code):
     written = []
     answers = SimpleNamespace(checks=[SimpleNamespace(passed=p) for p in passed])
-    stand_in(monkeypatch, lambda scenario, progress: answers, lambda a, folder, **_: written.append((a, folder)))
+    stand_in(monkeypatch, lambda scenario, **_: answers, lambda a, folder, desk: written.append((a, folder)))
     assert run(put(tmp_path)) == code
     assert written == [(answers, tmp_path / "answers")]
     assert "a line of the report" in capsys.readouterr().out
@@ -84,7 +84,7 @@ def test_exit_code_tells_whether_the_checks_passed(tmp_path, monkeypatch, capsys
 
 
 def failing(error):
-    def answer(scenario, progress):
+    def answer(scenario, **_):
         raise error
 
     return answer

@@ -1,15 +1,18 @@
 """The page that people look at: nothing overlaps, nothing is cut, the same bytes each time."""
 
+import sys
 import xml.etree.ElementTree as ElementTree
 from dataclasses import replace
+from pathlib import Path
 
 import numpy as np
 import pytest
 from matplotlib.image import imread
 from matplotlib.text import Annotation
 from small import changed, put
+from wellshed.scenarios import desk
 from wellshed.scenarios.answering import answer
-from wellshed.scenarios.drawing import CaseMap, map_of, save_maps
+from wellshed.scenarios.drawing import draw
 from wellshed.scenarios.maps import draw_map
 from wellshed.scenarios.reading import load
 
@@ -24,9 +27,9 @@ def contents(tmp_path_factory):
     bare = changed("levels:\n  file: levels.csv\n  error: 0.05\n", "", changed("A small place", LONG))
     (folder / "bare").mkdir()
     return {
-        "base": map_of(plain, "base").content,
-        "more": map_of(plain, "more").content,
-        "bare": map_of(answer(load(put(folder / "bare", bare))), "base").content,
+        "base": plain.maps["base"],
+        "more": plain.maps["more"],
+        "bare": answer(load(put(folder / "bare", bare))).maps["base"],
     }
 
 
@@ -71,18 +74,44 @@ def test_scales_are_equal_and_true(contents):
     assert x1 - x0 == pytest.approx(y1 - y0, rel=1e-9)
 
 
-def test_files_are_whole_and_the_same_each_time(contents, tmp_path):
-    for stem in ("a", "b"):
-        save_maps([(CaseMap(contents[k]), tmp_path / f"{stem}_{k}") for k in ("base", "more")], stem == "b")
-    for kind in ("base.png", "more.png"):
-        assert (tmp_path / f"a_{kind}").read_bytes() == (tmp_path / f"b_{kind}").read_bytes()
-    image = imread(tmp_path / "a_base.png")
+def at_a_desk(contents):
+    with desk.DrawingDesk() as drawing:
+        for case in ("base", "more"):
+            drawing.take(case, contents[case])
+        return drawing.drawings()
+
+
+def test_files_are_whole_and_the_same_wherever_they_are_drawn(contents, tmp_path):
+    here = {case: {kind: draw(contents[case], kind) for kind in desk.KINDS} for case in ("base", "more")}
+    assert at_a_desk(contents) == here
+    (tmp_path / "base.png").write_bytes(here["base"]["png"])
+    image = imread(tmp_path / "base.png")
     assert image.shape[0] > 600
     assert np.std(image[..., :3]) > 0.05
-    root = ElementTree.parse(tmp_path / "a_more.svg").getroot()
-    words = "".join(root.itertext())
+    words = "".join(ElementTree.fromstring(here["more"]["svg"]).itertext())
     assert "Case: more" in words  # text stays text
     assert "Steady, one layer, no vertical resistance" in words
+
+
+def test_maps_are_drawn_here_when_the_other_process_cannot(contents, monkeypatch):
+    monkeypatch.setattr(desk, "COMMAND", [sys.executable, "-c", "raise SystemExit(1)"])
+    found = at_a_desk(contents)
+    assert found["more"]["svg"] == draw(contents["more"], "svg")
+    assert set(found) == {"base", "more"}
+
+
+def test_an_error_in_drawing_is_raised_as_usual(contents):
+    with desk.DrawingDesk() as drawing, pytest.raises(TypeError):
+        drawing.take("base", replace(contents["base"], footer=None))
+        drawing.drawings()
+
+
+def test_nothing_is_left_of_a_desk(contents):
+    with desk.DrawingDesk() as drawing:
+        drawing.take("base", contents["base"])
+        folder, process = Path(drawing._folder.name), drawing._process
+    assert not folder.exists()
+    assert process.poll() is not None
 
 
 def test_the_map_says_when_a_check_failed(contents):

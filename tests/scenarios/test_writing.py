@@ -53,7 +53,7 @@ def test_a_failure_at_any_file_leaves_the_old_answers_whole(answers, tmp_path, m
     write(answers, tmp_path / "answers")
     before = contents(tmp_path / "answers")
     count = iter(range(100))
-    text, maps = writing._text, writing.save_maps
+    text = writing._text
 
     def failing(path, content):
         if next(count) == 4 * step:
@@ -63,12 +63,11 @@ def test_a_failure_at_any_file_leaves_the_old_answers_whole(answers, tmp_path, m
     monkeypatch.setattr(writing, "_text", failing)
     if step == 5:
         monkeypatch.setattr(writing, "_text", text)
-        monkeypatch.setattr(writing, "save_maps", lambda *_: (_ for _ in ()).throw(OSError(28, "No space left")))
+        monkeypatch.setattr(writing, "_drawn", lambda _: (_ for _ in ()).throw(OSError(28, "No space left")))
     with pytest.raises(WritingError, match="No space left"):
         write(answers, tmp_path / "answers")
     assert contents(tmp_path / "answers") == before
     assert [p.name for p in tmp_path.iterdir()] == ["answers"]
-    monkeypatch.setattr(writing, "save_maps", maps)
 
 
 def test_a_folder_with_other_things_is_not_touched(answers, tmp_path):
