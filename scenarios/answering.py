@@ -67,6 +67,7 @@ class Answers:
                 "residuals": rows,
                 "rmse": float(np.sqrt(np.mean(np.square(used)))) if used else None,
                 "scale": None if result is None else result.scale,
+                "ground_spread_factor": None if result is None else result.ground_spread,
                 "degrees_of_freedom": None if result is None or not np.isfinite(result.dof) else result.dof,
                 "own_errors": None if result is None else {
                     "misfit": result.own_misfit, "degrees_of_freedom": result.own_dof,

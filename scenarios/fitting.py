@@ -15,6 +15,8 @@ from .scenario import Scenario
 CONFLICT = 2.0  # prior sds between prior and posterior that call for a warning
 DOUBT = 0.01  # chance below which the readings' own errors do not explain the residuals
 MOST_TURNS = 6
+# nobody knows the ground's unevenness better than within these factors
+SPREAD_FACTOR, PATCH_FACTOR = 2.0, 3.0
 OPEN = 0.5  # share of the prior's spread that a direction keeps when the data say little about it
 
 Progress = Callable[[str], None]
@@ -48,10 +50,12 @@ def fit_scenario(scenario: Scenario, model: Model, progress: Progress = lambda _
     for turn in range(2):
         if uneven is not None and readings.head.size:
             progress(f"weighing uneven ground, turn {turn + 1}")
-            unit = ground_covariance(places, solved.state, readings.x, readings.y, uneven.patch.value)
+            unit = ground_covariance(places, solved.state, readings.x, readings.y, uneven.patch.value, PATCH_FACTOR)
             ground = uneven.spread.value**2 * unit
         progress(f"fitting {len(model.parameters)} numbers to {readings.values.size} readings, turn {turn + 1}")
-        result = fit(solved.state.system, inputs, model.parameters, readings, ground, start=start)
+        result = fit(
+            solved.state.system, inputs, model.parameters, readings, ground, ground_factor=SPREAD_FACTOR, start=start
+        )
         start, solved = result.theta, result.solved
     assert result is not None
     solution, solved = settle(model, with_values(inputs, model.parameters, result.theta), scenario.tolerance, solution)

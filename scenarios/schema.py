@@ -84,9 +84,9 @@ class UnevenBlock(Block):
     """Uneven ground: the error that any smooth model of the aquifer makes."""
 
     spread: Annotated[Stated, Takes("number", least=0.0, fitted=False)] = Stated(0.5, "1")
-    """Standard deviation of ln conductivity; default 0.5."""
+    """Standard deviation of ln conductivity, taken as known within a factor of two; default 0.5."""
     patch: Annotated[Stated, Takes("length", above=0.0, fitted=False)] = Stated(300.0, "m")
-    """Length of a patch (length); default 300 m."""
+    """Length of a patch (length), taken as known within a factor of three; default 300 m."""
 
 
 def _uneven_form(raw: object) -> str | None:

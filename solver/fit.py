@@ -4,8 +4,8 @@
 
 by Gauss-Newton with the analytic Jacobian. D: variance of readings, with blocks where a group shares a datum. The
 scale is estimated with the fit, drawn towards 1 by ``PRIOR_READINGS`` pseudo-readings, and the intervals are
-Student's t with the degrees of freedom that leaves. Names: generalised least squares (Aitken 1935); uneven ground by
-``ground``.
+Student's t with the degrees of freedom that leaves; so is s, within a stated factor. Names: generalised least squares
+(Aitken 1935); uneven ground by ``ground``.
 """
 
 from collections.abc import Sequence
@@ -23,8 +23,9 @@ from .state import NotSolvedError
 from .system import System
 
 PRIOR_READINGS = 4.0  # weight of "the stated errors are right" against the residuals when the scale is estimated
-MOST_STEPS = 40
+MOST_STEPS = 100
 LEAST_SCALE = 0.1
+GRID, GRID_REACH = 17, 2.2  # values of the ground's sd that are weighed, over this many of its own sds
 ENOUGH = 0.25  # part of the promised fall that a step must bring (Armijo 1966); any fall at all lets steps swing
 
 
@@ -69,9 +70,10 @@ class FitResult:
     """A fitted site.
 
     theta, covariance: (log) parameters and their posterior; informed (p,): 1 - posterior/prior variance; residuals,
-    leverage, standardized (n,) in the order of ``Readings.values``; scale of Sigma; dof of its t distribution;
-    jacobian (n, p); sigma (n, n) with the scale in; own_misfit: weighted misfit with the readings' own errors alone,
-    its degrees of freedom and the probability of a larger one.
+    leverage, standardized (n,) in the order of ``Readings.values``; scale of Sigma; ground_spread: what the stated sd
+    of the ground was multiplied with before that; dof of the t distribution; jacobian (n, p); sigma (n, n) with both
+    in; own_misfit: weighted misfit with the readings' own errors alone, its degrees of freedom and the probability of
+    a larger one.
     """
 
     parameters: tuple[Parameter, ...]
@@ -83,6 +85,7 @@ class FitResult:
     standardized: Floats
     leverage: Floats
     scale: float
+    ground_spread: float
     dof: float
     jacobian: Floats
     sigma: Floats
@@ -181,34 +184,25 @@ def fit(
     readings: Readings,
     ground: Floats,
     *,
+    ground_factor: float = 1.0,
     start: Floats | None = None,
 ) -> FitResult:
     """Fit parameters (p,) to readings (n,) with the covariance ``ground`` (k, k) (m2) of uneven ground at the levels.
 
+    ground_factor: the sd that ``ground`` stands for is known within this factor; the residuals then have their say.
     Raises NotSolvedError where no step lowers the misfit to a settled place.
     """
     model = make_model(system, inputs, parameters, readings)
     own = readings.reading_covariance()
-    sigma0 = own.copy()
-    sigma0[: readings.head.size, : readings.head.size] += ground
-    point = _settle(model, model.first(start), sigma0, 1.0)
-    steps = point.steps
-    scale, dof = 1.0, np.inf
-    for _ in range(MOST_STEPS):
-        before = point.theta
-        for _ in range(MOST_STEPS):  # the scale at these values: its own small fixed point
-            covariance = _posterior(point.jacobian, scale**2 * sigma0, parameters)
-            residuals, previous = readings.values - point.computed, scale
-            scale, dof = _scale(residuals, sigma0, point.jacobian, covariance, scale)
-            if abs(scale - previous) < 1e-6 * scale:
-                break
-        point = _settle(model, point, sigma0, scale)
-        steps += point.steps
-        if np.all(abs(point.theta - before) <= 1e-3 * np.sqrt(np.diag(covariance))):
-            break
-    else:
-        raise NotSolvedError("the scale of the errors and the fitted values did not settle together")
-    sigma = scale**2 * sigma0
+    uneven = np.zeros_like(own)
+    uneven[: readings.head.size, : readings.head.size] = ground
+    spread = 1.0
+    settled = _settle_with_scale(model, model.first(start), own + uneven)
+    if ground_factor != 1.0 and np.any(ground) and parameters:
+        spread = _ground_spread(model, settled.point, own, uneven, ground_factor)
+        settled = _settle_with_scale(model, settled.point, own + spread**2 * uneven, settled.steps)
+    point, scale = settled.point, settled.scale
+    sigma = scale**2 * (own + spread**2 * uneven)
     covariance = _posterior(point.jacobian, sigma, parameters)
     residuals = readings.values - point.computed
     leverage, standardized = _diagnostics(residuals, sigma, point.jacobian, covariance)
@@ -217,8 +211,79 @@ def fit(
     probability = float(scipy.special.chdtrc(own_dof, own_misfit)) if own_dof > 0 else np.nan
     return FitResult(
         tuple(parameters), point.theta, covariance, informed, point.computed, residuals, standardized, leverage,
-        scale, dof, point.jacobian, sigma, own_misfit, own_dof, probability, steps, point.solved,
+        scale, spread, settled.dof, point.jacobian, sigma, own_misfit, own_dof, probability, settled.steps,
+        point.solved,
     )  # fmt: skip
+
+
+@dataclass(frozen=True)
+class _Settled:
+    """Where the fit came to rest: the point, the scale of Sigma, its degrees of freedom, steps taken in all."""
+
+    point: _Point
+    scale: float
+    dof: float
+    steps: int
+
+
+def _settle_with_scale(model: _Model, point: _Point, sigma0: Floats, steps: int = 0) -> _Settled:
+    """Parameters and the scale of Sigma together, by turns."""
+    point = _settle(model, point, sigma0, 1.0)
+    steps += point.steps
+    scale, dof = 1.0, np.inf
+    for _ in range(MOST_STEPS):
+        before = point.theta
+        residuals = model.readings.values - point.computed
+        scale, dof, covariance = _scale_at(residuals, sigma0, point.jacobian, model.parameters, scale)
+        point = _settle(model, point, sigma0, scale)
+        steps += point.steps
+        if np.all(abs(point.theta - before) <= 1e-3 * np.sqrt(np.diag(covariance))):
+            return _Settled(point, scale, dof, steps)
+    raise NotSolvedError("the scale of the errors and the fitted values did not settle together")
+
+
+def _scale_at(
+    residuals: Floats, sigma0: Floats, jacobian: Floats, parameters: Sequence[Parameter], scale: float
+) -> tuple[float, float, Floats]:
+    """Scale of Sigma at fixed parameter values, by its own small fixed point; degrees of freedom, covariance."""
+    dof, covariance = np.inf, np.zeros((0, 0))
+    for _ in range(MOST_STEPS):
+        covariance = _posterior(jacobian, scale**2 * sigma0, parameters)
+        previous = scale
+        scale, dof = _scale(residuals, sigma0, jacobian, covariance, scale)
+        if abs(scale - previous) < 1e-6 * scale:
+            break
+    return scale, dof, covariance
+
+
+def _ground_spread(model: _Model, point: _Point, own: Floats, uneven: Floats, factor: float) -> float:
+    """Root of the posterior mean of the square by which the ground's stated sd is to be multiplied.
+
+    On a grid, with the fit linearised where it stands and the scale at its best for each value: restricted likelihood
+    (Patterson & Thompson 1971) times the priors of the sd (log-normal, one sd = the factor) and of the scale.
+    """
+    parameters, jacobian = model.parameters, point.jacobian
+    mean = np.array([p.mean for p in parameters])
+    precision = _precision(parameters)
+    residuals = model.readings.values - point.computed
+    from_mean = residuals + jacobian @ (point.theta - mean)  # what the parameters have to explain, from their means
+    logs = np.linspace(-GRID_REACH, GRID_REACH, GRID)
+    score = np.empty(GRID)
+    for k, log in enumerate(logs):
+        sigma0 = own + np.exp(2.0 * log * np.log(factor)) * uneven
+        scale, _, _ = _scale_at(residuals, sigma0, jacobian, parameters, 1.0)
+        whitener = scale * np.linalg.cholesky(sigma0)
+        white = scipy.linalg.solve_triangular(whitener, np.column_stack([jacobian, from_mean]), lower=True)
+        j, y = white[:, :-1], white[:, -1]
+        information = j.T @ j + np.diag(precision)
+        theta = np.linalg.solve(information, j.T @ y)
+        misfit = np.sum((y - j @ theta) ** 2) + precision @ theta**2
+        score[k] = (
+            -np.sum(np.log(np.diag(whitener))) - 0.5 * np.linalg.slogdet(information)[1] - 0.5 * misfit
+            - PRIOR_READINGS * (np.log(scale) + 0.5 / scale**2) - 0.5 * log**2
+        )  # fmt: skip
+    weight = np.exp(score - score.max())
+    return float(np.sqrt(weight @ np.exp(2.0 * logs * np.log(factor)) / weight.sum()))
 
 
 def _precision(parameters: Sequence[Parameter]) -> Floats:

@@ -22,6 +22,7 @@ from .state import State, flow_of
 from .system import UNIT
 
 MOST_CELLS = 2600
+UNSURE = (0.25, 0.5, 0.25)
 
 
 @dataclass(frozen=True)
@@ -136,8 +137,17 @@ def _unit_square(side: float) -> FlowField:
     return superpose(UNIT, areas=[RechargeArea("cell", *ring, 1.0)])
 
 
-def ground_covariance(places: Places, state: State, x: Floats, y: Floats, patch: float) -> Floats:
-    """Covariance (m2) of the heads at map points x, y (k,) in ground with sd(ln K) = 1: J R J', (k, k)."""
+def ground_covariance(places: Places, state: State, x: Floats, y: Floats, patch: float, factor: float = 1.0) -> Floats:
+    """Covariance (m2) of the heads at map points x, y (k,) in ground with sd(ln K) = 1: J R J', (k, k).
+
+    factor: the patch length (m) is known within this factor; R is then its mean over patch / factor, patch and
+    patch x factor with the weights UNSURE. Long patches make the errors that all levels share, and these decide how
+    well the conductivity is known.
+    """
     cells = make_cells(places, x, y, patch)
     response = cell_responses(places, state, x, y, cells)
-    return response @ cell_correlation(cells, patch) @ response.T
+    if factor == 1.0:
+        return response @ cell_correlation(cells, patch) @ response.T
+    lengths = (patch / factor, patch, patch * factor)
+    mean = np.sum([w * cell_correlation(cells, p) for w, p in zip(UNSURE, lengths, strict=True)], axis=0)
+    return response @ mean @ response.T

@@ -10,6 +10,7 @@ from wellshed.elements.lake import LakeEdge
 from wellshed.elements.recharge import RechargeArea
 from wellshed.elements.stream import Stream
 from wellshed.elements.well import PumpingWell
+from wellshed.scenarios.fitting import PATCH_FACTOR, SPREAD_FACTOR
 from wellshed.solver.boundary import solve_places
 from wellshed.solver.fit import Readings, fit
 from wellshed.solver.ground import ground_covariance
@@ -20,7 +21,9 @@ BASE, SHORE, READING = 4.0, 20.0, 0.05  # m
 MEANS = {"conductivity": 6.0, "rain": 6e-4, "beck": 0.0, "well": 220.0}  # m/d, m/d, m, m3/d
 SPREADS = {"conductivity": 0.7, "rain": 0.3, "beck": 0.2, "well": 0.25}  # of the logarithms; of the stage in m
 LOG = {"conductivity", "rain", "well"}
-DEFAULT = (0.5, 300.0)  # spread (-) and patch (m) that a scenario assumes when it says nothing
+# spread (-) and patch (m) that a scenario assumes when it says nothing, and the factors within which it trusts any
+DEFAULT = (0.5, 300.0, (SPREAD_FACTOR, PATCH_FACTOR))
+KNOWN = (1.0, 1.0)
 RING = np.array(
     [[1200, 100], [1050, 560], [620, 830], [150, 960], [-420, 870], [-900, 640], [-1180, 180], [-1050, -330],
      [-640, -700], [-80, -900], [480, -760], [980, -420]], dtype=float,
@@ -114,12 +117,23 @@ def model_at(island: Island, theta: np.ndarray) -> Solved:
     return solve_inputs(island.system, with_values(island.inputs, island.parameters, theta))
 
 
-def fit_island(island: Island, heads: np.ndarray, spread: float, patch: float):
-    """The fit as a scenario does it: ground weighed at the priors, then at the fitted field. Returns FitResult."""
+def fit_island(island: Island, heads: np.ndarray, spread: float, patch: float, factors: tuple[float, float]):
+    """The fit as a scenario does it: ground weighed at the priors, then at the fitted field. Returns FitResult.
+
+    factors: within which spread and patch are known; 1 = exactly.
+    """
     readings = readings_of(island, heads)
-    result = fit(island.system, island.inputs, island.parameters, readings, spread**2 * island.unit)
-    unit = ground_covariance(island.places, result.solved.state, island.x, island.y, patch)
-    return fit(island.system, island.inputs, island.parameters, readings, spread**2 * unit, start=result.theta)
+    of_spread, of_patch = factors
+    result, solved = None, model_at(island, np.array([p.mean for p in island.parameters]))
+    for _ in range(2):
+        unit = ground_covariance(island.places, solved.state, island.x, island.y, patch, of_patch)
+        start = None if result is None else result.theta
+        result = fit(
+            island.system, island.inputs, island.parameters, readings, spread**2 * unit, ground_factor=of_spread,
+            start=start,
+        )  # fmt: skip
+        solved = result.solved
+    return result
 
 
 def covered(result, theta: np.ndarray, share: float = 0.9) -> np.ndarray:

@@ -1,7 +1,8 @@
 """Whether the intervals of fitted values hold the truth as often as they say, in uneven ground that the fit ignores.
 
 Truths come from finite elements with simulated conductivity; everything fitted is drawn from its prior. The fit
-assumes the default unevenness (spread 0.5, patch 300 m) whatever the ground is, and estimates the scale of its errors.
+assumes the default unevenness (spread 0.5 within a factor of 2, patch 300 m within a factor of 3) whatever the ground
+is, and estimates the scale of its errors.
 """
 
 import numpy as np
@@ -10,9 +11,6 @@ import uneven_island
 from wellshed.solver.fit import fit
 from wellshed.solver.state import flow_of
 
-# In the roughest ground, of patches a quarter of the island, the conductivity's interval is too short (0.80, and 0.84
-# with the ground's own spread and patch): the error model is of first order in the spread, which is no longer small.
-KNOWN_SHORT = {(0.7, 500.0, "conductivity")}
 GROUNDS = [(0.3, 150.0), (0.3, 500.0), (0.7, 150.0), (0.7, 500.0)]
 
 
@@ -29,7 +27,9 @@ def study(island, spread, patch, seeds):
         result = uneven_island.fit_island(island, heads, *uneven_island.DEFAULT)
         hits.append(uneven_island.covered(result, theta))
         scales.append(result.scale)
-        own.append(uneven_island.covered(uneven_island.fit_island(island, heads, spread, patch), theta))
+        own.append(
+            uneven_island.covered(uneven_island.fit_island(island, heads, spread, patch, uneven_island.KNOWN), theta)
+        )
     return np.mean(hits, axis=0), np.mean(own, axis=0), np.median(scales)
 
 
@@ -70,10 +70,5 @@ def test_coverage_of_ninety_percent_intervals(island, spread, patch):
     for kind, shares in (("default model", default), ("the ground's own", own)):
         listed = ", ".join(f"{n} {s:.3f}" for n, s in zip(names, shares, strict=True))
         print(f"  {kind:17s} {listed}; mean {shares.mean():.3f}", flush=True)
-    assert 0.85 <= default.mean() <= 0.95
+    assert np.all((default >= 0.85) & (default <= 0.95))
     assert 0.85 <= own.mean() <= 0.95
-    off = {n for n, share in zip(names, default, strict=True) if not 0.85 <= share <= 0.95}
-    known = {n for n in names if (spread, patch, n) in KNOWN_SHORT}
-    assert off == known  # no other one, and the known one only as long as it is
-    if known:
-        pytest.xfail(f"known to be too short: {', '.join(sorted(known))}")
