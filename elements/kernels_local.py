@@ -6,6 +6,7 @@ from .jit import driver, inlined, kernel
 from .kernels_field import N_BLOCK_ROWS, NEAR2, from_middle, near_discharge, panel_discharges
 from .kernels_line import N_WORK, far_series, far_terms
 from .kernels_point import discharge_well
+from .local_tree import held_elsewhere
 
 APART = 2.5  # half diagonals from the centre of a square: elements farther than this are far
 N_TERM = 32  # of the series, a multiple of four
@@ -195,6 +196,7 @@ def _edges_apart(px, py, x, y, radius, first, last, tree, n_near, block, cover):
 @driver
 def grow(tree, middle_x, middle_y, half, deepest, few):
     """Fill a tree's arrays; returns how many squares and near elements there are, or 0, 0 where they have no room."""
+    tree = held_elsewhere(tree)
     wells = tree.wells
     square, child, series, near, part = tree.square, tree.child, tree.series, tree.near, tree.part
     work = np.empty((2, N_WORK), np.complex128)
@@ -282,6 +284,7 @@ def grow(tree, middle_x, middle_y, half, deepest, few):
 @driver
 def local_flows(x, y, tree, qx, qy, rate):
     """Discharge vector and recharge at points x, y (n,) into qx, qy, rate (n,)."""
+    tree = held_elsewhere(tree)
     work = np.empty((2, N_WORK), np.complex128)
     for i in range(x.size):
         qx[i], qy[i], rate[i] = local_flow_at(x[i], y[i], tree, work)

@@ -14,37 +14,15 @@ Truncation: a term of order k falls by APART^-k at the corners, so that N_TERM t
 corners (Cauchy's integral by the trapezoidal rule, whose aliasing is of the same size).
 """
 
-from typing import NamedTuple
-
 import numpy as np
-from numpy.typing import NDArray
 
-from .field_arrays import FieldArrays, Floats, Ints
+from .field_arrays import FieldArrays
 from .kernels_local import N_TERM, grow
+from .local_tree import LocalArrays
 
 DEEPEST = 7  # halvings of the box
 FEW = 2  # a square with no more elements near it is not cut
 ROOM = 4096  # squares to begin with
-
-
-class LocalArrays(NamedTuple):
-    """Tree over a field. Square 1 is the box; square 0 stands for everywhere else and lists every element as near."""
-
-    uniform: Floats  # what is taken from FieldArrays
-    wells: Floats
-    panel: Floats
-    kind: Ints
-    vortex: Ints
-    n_coef: Ints
-    coef: Floats
-    moment: Floats
-    edge: Floats
-    edge_rate: Floats  # (e,) m/d
-    square: Floats  # (n, 3) centre x, y, half diagonal (m, local coordinates)
-    child: Ints  # (n,) first of four squares that lie within, -1 for none
-    series: NDArray[np.complex128]  # (n, 2, N_TERM) of A (m2/d) and G (m/d) in (z - c) / half diagonal
-    part: Ints  # (n, 4) in ``near``: first panel, first well, first edge, end
-    near: Ints  # indices of near panels, wells, edges, one square's after the other's
 
 
 def local_arrays(field: FieldArrays, box: tuple[float, float, float, float], deepest: int = DEEPEST) -> LocalArrays:

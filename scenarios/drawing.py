@@ -10,10 +10,10 @@ from pathlib import Path
 import matplotlib as mpl
 import numpy as np
 
-from .map_content import MapContent
+from .desk import KINDS
+from .map_content import LevelMark, MapContent, Reach, WellMark, ZoneMark
 from .maps import STYLE, draw_map
 
-DPI = 160
 AT_ONCE = 2  # files
 
 
@@ -25,7 +25,7 @@ def draw(content: MapContent, kind: str) -> bytes:
         with mpl.rc_context({**STYLE, "svg.hashsalt": f"{content.title} {content.case}"}):
             figure.savefig(file, format="svg", metadata={"Date": None, "Title": content.title})
     else:
-        figure.savefig(file, format="png", dpi=DPI, metadata={"Software": None}, pil_kwargs={"compress_level": 4})
+        figure.savefig(file, format="png", metadata={"Software": None}, pil_kwargs={"compress_level": 3})
     return file.getvalue()
 
 
@@ -35,9 +35,9 @@ def main() -> None:
     Where processes can fork, each file is drawn by a child, so that the library is loaded once and two cores draw.
     """
     gc.disable()  # figures are garbage that refers to itself, but there are few
-    empty = np.zeros(0)
-    # loads the fonts
-    draw(MapContent("", "", (0.0, 1.0, 0.0, 1.0), "", "", ("",), empty, empty, np.zeros((0, 0)), 1.0), "png")
+    rehearsal = _rehearsal()
+    for kind in KINDS:
+        draw(rehearsal, kind)
     children = 0
     while True:
         try:
@@ -59,6 +59,22 @@ def main() -> None:
             children += 1
     for _ in range(children):
         os.wait()
+
+
+def _rehearsal() -> MapContent:
+    """A map with something of every kind: drawn once, the library has loaded what it needs, fonts above all."""
+    ring = np.array([[0.2, 0.2], [0.4, 0.2], [0.3, 0.4]])
+    line = np.array([[0.0, 0.9], [0.5, 0.8], [1.0, 0.9]])
+    x = np.linspace(0.0, 1.0, 5)
+    reaches = tuple(Reach(line - 0.1 * k, state) for k, state in enumerate(("gains", "loses", "still")))
+    levels = tuple(LevelMark("L", 0.1 * k, 0.6, 0.1 * k, 0.1 * k - 0.3, k == 2) for k in range(8))
+    zones = (ZoneMark("W", None, (ring + 0.3,)), ZoneMark("W", 50.0, (ring + 0.3,)))
+    return MapContent(
+        "Rehearsal", "Case: none", (0.0, 1.0, 0.0, 1.0), "local", "m", ("0123456789 abcdefghijklmnopqrstuvwxyz",), x, x,
+        x[:, None] + x[None, :] ** 2, 0.2, (("lake", 1.0, ring),), (("stream", line),), line - 0.5, reaches,
+        (WellMark("well", 0.7, 0.3, 1.0), WellMark("well", 0.9, 0.1, -1.0)), levels, (line + 0.05,),
+        ((0.5, 0.5, 1.0),), ((0.6, 0.2, 0.0),), zones, ((0.8, 0.8),),
+    )  # fmt: skip
 
 
 def _save(content: MapContent, file: Path) -> None:

@@ -7,7 +7,7 @@ import numpy as np
 
 from ..solver.boundary import Solution, solution_of, solve_places
 from ..solver.fit import FitResult, fit
-from ..solver.ground import ground_covariance
+from ..solver.ground import make_ground
 from ..solver.inputs import Inputs, Parameter, Solved, solve_inputs, with_values
 from .building import Model
 from .scenario import Scenario
@@ -47,11 +47,13 @@ def fit_scenario(scenario: Scenario, model: Model, progress: Progress = lambda _
     uneven = scenario.aquifer.uneven
     start = None
     result = None
+    below = None
+    if uneven is not None and readings.head.size:
+        below = make_ground(places, readings.x, readings.y, uneven.patch.value, PATCH_FACTOR)
     for turn in range(2):
-        if uneven is not None and readings.head.size:
+        if uneven is not None and below is not None:
             progress(f"weighing uneven ground, turn {turn + 1}")
-            unit = ground_covariance(places, solved.state, readings.x, readings.y, uneven.patch.value, PATCH_FACTOR)
-            ground = uneven.spread.value**2 * unit
+            ground = uneven.spread.value**2 * below.covariance(places, solved.state, readings.x, readings.y)
         progress(f"fitting {len(model.parameters)} numbers to {readings.values.size} readings, turn {turn + 1}")
         result = fit(
             solved.state.system, inputs, model.parameters, readings, ground, ground_factor=SPREAD_FACTOR, start=start

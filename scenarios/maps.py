@@ -26,6 +26,7 @@ STYLE: Any = {
 PALE = LinearSegmentedColormap.from_list("pale", ["#f6f1e3", "#e3ecdf", "#c4dce0", "#a5c8dd"])
 WATER, DEEP, LOSS, INK = "#d6e6f2", "#1b4f7a", "#a0522d", "#222222"
 TIMES = [(0, (5, 2)), (0, (5, 1.5, 1, 1.5)), (0, (1.2, 1.4)), (0, (8, 2, 1, 1, 1, 2))]
+DPI = 160  # of the PNG; texts are measured at the same
 LANDSCAPE, PORTRAIT = (11.69, 8.27), (8.27, 11.69)  # A4, inches
 TOP, SIDE = 0.62, 0.72  # inches above and beside the map
 WIDE_LEGEND = 10.0  # inches that three columns of the legend take
@@ -35,7 +36,7 @@ ROW, LINE = 0.14, 0.113  # inches for a row of the legend and a line of the foot
 def draw_map(content: MapContent) -> Figure:
     """The map of some content as a figure; nothing global is touched."""
     with mpl.rc_context(STYLE):
-        figure = Figure(dpi=200)
+        figure = Figure(dpi=DPI)
         canvas = FigureCanvasAgg(figure)
         axes = figure.add_axes((0.1, 0.3, 0.8, 0.6))
         axes.set_autoscale_on(False)

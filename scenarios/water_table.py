@@ -91,12 +91,13 @@ def head_grid(case: CaseAnswer) -> tuple[Floats, Floats, Floats, int]:
 
 def on_ground(case: CaseAnswer, x: Floats, y: Floats) -> NDArray[np.bool_]:
     """Where the aquifer is: outside lakes, inside closed outlines and island shores."""
-    points = shapely.points(x, y)
     keep = np.ones(x.shape, dtype=bool)
     for line in case.model.places.lines:
         if not getattr(line, "closed", False):
             continue
-        inside = shapely.contains(shapely.Polygon(np.stack([line.x, line.y], axis=1)), points)
+        ring = shapely.Polygon(np.stack([line.x, line.y], axis=1))
+        shapely.prepare(ring)
+        inside = shapely.contains_xy(ring, x, y)
         land_inside = isinstance(line, Outline) or (isinstance(line, LakeEdge) and line.land_inside)
         keep &= inside if land_inside else ~inside
     return keep

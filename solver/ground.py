@@ -72,12 +72,11 @@ def cell_correlation(cells: Cells, patch: float) -> Floats:
     w = np.concatenate([half_weight[::-1], half_weight]) * (1.0 - abs(d) / cells.side)
     n_col, n_row = int(np.ptp(cells.column)) + 1, int(np.ptp(cells.row)) + 1
     table = np.empty((n_col, n_row))
+    dy = np.arange(n_row)[:, None] * cells.side + d
     for i in range(n_col):
         dx = i * cells.side + d
-        for j in range(n_row):
-            dy = j * cells.side + d
-            r = np.sqrt(dx[:, None] ** 2 + dy[None, :] ** 2)
-            table[i, j] = w @ np.exp(-r / patch) @ w
+        r = np.sqrt(dx[None, :, None] ** 2 + dy[:, None, :] ** 2)
+        table[i] = np.einsum("x,jxy,y->j", w, np.exp(-r / patch), w, optimize=True)
     di = abs(cells.column[:, None] - cells.column[None, :])
     dj = abs(cells.row[:, None] - cells.row[None, :])
     return table[di, dj]
@@ -137,17 +136,28 @@ def _unit_square(side: float) -> FlowField:
     return superpose(UNIT, areas=[RechargeArea("cell", *ring, 1.0)])
 
 
-def ground_covariance(places: Places, state: State, x: Floats, y: Floats, patch: float, factor: float = 1.0) -> Floats:
-    """Covariance (m2) of the heads at map points x, y (k,) in ground with sd(ln K) = 1: J R J', (k, k).
+@dataclass(frozen=True)
+class Ground:
+    """Cells of a site and the correlation (c, c) of ln K between them, for one ground whatever flows through it."""
 
-    factor: the patch length (m) is known within this factor; R is then its mean over patch / factor, patch and
-    patch x factor with the weights UNSURE. Long patches make the errors that all levels share, and these decide how
-    well the conductivity is known.
+    cells: Cells
+    correlation: Floats
+
+    def covariance(self, places: Places, state: State, x: Floats, y: Floats) -> Floats:
+        """Covariance (m2) of the heads at map points x, y (k,) where sd(ln K) = 1: J R J', (k, k)."""
+        response = cell_responses(places, state, x, y, self.cells)
+        return response @ self.correlation @ response.T
+
+
+def make_ground(places: Places, x: Floats, y: Floats, patch: float, factor: float = 1.0) -> Ground:
+    """Ground of a patch length (m) under the levels x, y (k,), known within a factor.
+
+    R is then its mean over patch / factor, patch and patch x factor with the weights UNSURE. Long patches make the
+    errors that all levels share, and these decide how well the conductivity is known.
     """
     cells = make_cells(places, x, y, patch)
-    response = cell_responses(places, state, x, y, cells)
     if factor == 1.0:
-        return response @ cell_correlation(cells, patch) @ response.T
+        return Ground(cells, cell_correlation(cells, patch))
     lengths = (patch / factor, patch, patch * factor)
-    mean = np.sum([w * cell_correlation(cells, p) for w, p in zip(UNSURE, lengths, strict=True)], axis=0)
-    return response @ mean @ response.T
+    parts = [w * cell_correlation(cells, p) for w, p in zip(UNSURE, lengths, strict=True)]
+    return Ground(cells, np.sum(parts, axis=0))

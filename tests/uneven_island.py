@@ -13,7 +13,7 @@ from wellshed.elements.well import PumpingWell
 from wellshed.scenarios.fitting import PATCH_FACTOR, SPREAD_FACTOR
 from wellshed.solver.boundary import solve_places
 from wellshed.solver.fit import Readings, fit
-from wellshed.solver.ground import ground_covariance
+from wellshed.solver.ground import make_ground
 from wellshed.solver.inputs import Inputs, Parameter, Solved, solve_inputs, with_values
 from wellshed.solver.setting import sort_elements
 
@@ -75,7 +75,7 @@ def make_island(count: int = 22, size: float = 45.0) -> Island:
         Parameter(n, *kinds[n], n in LOG, np.log(MEANS[n]) if n in LOG else MEANS[n], SPREADS[n], "") for n in MEANS
     )
     x, y = levels(count)
-    unit = ground_covariance(places, solution.state, x, y, DEFAULT[1])
+    unit = make_ground(places, x, y, DEFAULT[1]).covariance(places, solution.state, x, y)
     site = fem.Site(RING, BASE, MEANS["conductivity"], size, shore=SHORE, tip=3.0, slope=0.4)
     site = replace(site, streams=(fem.Stream("beck", BECK, STAGES),), wells=(fem.Well("well", *WELL, 0.0, 8.0),))
     return Island(solution.state.system, Inputs(setting), parameters, places, x, y, site, fem._mesh(site), unit)
@@ -124,9 +124,10 @@ def fit_island(island: Island, heads: np.ndarray, spread: float, patch: float, f
     """
     readings = readings_of(island, heads)
     of_spread, of_patch = factors
+    ground = make_ground(island.places, island.x, island.y, patch, of_patch)
     result, solved = None, model_at(island, np.array([p.mean for p in island.parameters]))
     for _ in range(2):
-        unit = ground_covariance(island.places, solved.state, island.x, island.y, patch, of_patch)
+        unit = ground.covariance(island.places, solved.state, island.x, island.y)
         start = None if result is None else result.theta
         result = fit(
             island.system, island.inputs, island.parameters, readings, spread**2 * unit, ground_factor=of_spread,

@@ -9,11 +9,12 @@ Coefficients: Dormand & Prince (1980); dense output of order 4: Shampine (1986).
 
 import numpy as np
 
-from ..elements.jit import driver, kernel
+from ..elements.jit import driver, kernel, unowned
 from ..elements.kernels_line import N_WORK
 from ..elements.kernels_local import flow_at, local_flow_at
+from ..elements.local_tree import held_elsewhere
 from .endings import Ending
-from .obstacles import WALL
+from .obstacles import WALL, ObstacleArrays
 
 A = np.array(
     [
@@ -135,7 +136,8 @@ def follow(x, y, phi, sign, tree, medium, obstacles, t_max, tol, q_rest, marks, 
     """
     conductivity, full, porosity = medium[0], medium[1], medium[2]
     wells = tree.wells
-    rate = np.empty((7, 3))
+    owned_rate = np.empty((7, 3))
+    rate = unowned(owned_rate)
     t = 0.0
     n_points = 1
     points[0, 0] = x
@@ -389,7 +391,12 @@ def follow(x, y, phi, sign, tree, medium, obstacles, t_max, tol, q_rest, marks, 
 @driver
 def follow_all(x, y, phi, sign, tree, medium, obstacles, t_max, tol, q_rest, marks, at_marks, points, share, result):
     """Follow particles x, y (n,); outputs as in ``follow`` with a first axis n; result (n, 4) its return values."""
-    work = np.empty((2, N_WORK), np.complex128)
+    tree = held_elsewhere(tree)
+    lines = ObstacleArrays(
+        unowned(obstacles.segment), unowned(obstacles.line), unowned(obstacles.ending), unowned(obstacles.box)
+    )
+    owned_work = np.empty((2, N_WORK), np.complex128)
+    work = unowned(owned_work)
     for i in range(x.size):
         result[i, 0], result[i, 1], result[i, 2], result[i, 3] = follow(
             x[i],
@@ -398,7 +405,7 @@ def follow_all(x, y, phi, sign, tree, medium, obstacles, t_max, tol, q_rest, mar
             sign,
             tree,
             medium,
-            obstacles,
+            lines,
             t_max,
             tol,
             q_rest,

@@ -145,15 +145,13 @@ def _gaps(
 
     The distance of the shorter one's places from the longer one, and the larger of this and its reverse.
     """
-    near, far = np.empty(angles.size), np.empty(angles.size)
-    for i in range(angles.size):
-        j = (i + 1) % angles.size
-        key = float(angles[i]), float(angles[j])
-        if key not in known:
-            one = farthest(paths.points[i], paths.points[j], SAMPLES)
-            other = farthest(paths.points[j], paths.points[i], SAMPLES)
-            known[key] = min(one, other), max(one, other)
-        near[i], far[i] = known[key]
+    key = [(float(a), float(b)) for a, b in zip(angles, np.roll(angles, -1), strict=True)]
+    new = np.array([i for i, pair in enumerate(key) if pair not in known], dtype=np.int64)
+    after = (new + 1) % angles.size
+    there, back = farthest(paths.points, new, after, SAMPLES), farthest(paths.points, after, new, SAMPLES)
+    for i, one, other in zip(new, there, back, strict=True):
+        known[key[i]] = float(min(one, other)), float(max(one, other))
+    near, far = np.array([known[pair] for pair in key]).T
     return near, far
 
 

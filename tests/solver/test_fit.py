@@ -12,7 +12,7 @@ from wellshed.elements.stream import Stream
 from wellshed.elements.well import PumpingWell
 from wellshed.solver.boundary import solve_places
 from wellshed.solver.fit import PRIOR_READINGS, Readings, fit, make_model
-from wellshed.solver.ground import ground_covariance
+from wellshed.solver.ground import make_ground
 from wellshed.solver.inputs import Inputs, Parameter
 from wellshed.solver.setting import sort_elements
 from wellshed.solver.state import NotSolvedError
@@ -97,7 +97,9 @@ def test_noiseless_readings_give_the_truth_without_any_prior(top):
 def test_fit_stands_at_the_minimum_of_the_penalised_misfit(free, weak):
     system, inputs, places, state = free
     readings = measured(free, readings_of(), np.random.default_rng(8).standard_normal(COUNT + 1))
-    ground = 0.4**2 * ground_covariance(places, state, readings.x, readings.y, 150.0)
+    ground = 0.4**2 * make_ground(places, readings.x, readings.y, 150.0).covariance(
+        places, state, readings.x, readings.y
+    )
     spreads = {"K": 0.5, "rain": 0.3, "brook": 0.2, "well": 0.2}
     parameters = parameters_of(*TRUE, spreads={n: s * (4.0 if weak else 1.0) for n, s in spreads.items()})
     result = fit(system, inputs, parameters, readings, ground)
@@ -125,7 +127,9 @@ def test_leverage_sums_to_the_effective_number_of_parameters(free):
     """tr(J C J' S^-1) = p - tr(C P^-1), and with independent priors that is the sum of what each is informed."""
     system, inputs, places, state = free
     readings = measured(free, readings_of(), np.random.default_rng(9).standard_normal(COUNT + 1))
-    ground = 0.5**2 * ground_covariance(places, state, readings.x, readings.y, 150.0)
+    ground = 0.5**2 * make_ground(places, readings.x, readings.y, 150.0).covariance(
+        places, state, readings.x, readings.y
+    )
     parameters = parameters_of(*TRUE, spreads={"K": 0.4, "rain": 0.25, "brook": np.inf, "well": 0.15})
     result = fit(system, inputs, parameters, readings, ground)
     assert result.leverage.sum() == pytest.approx(result.informed.sum(), rel=1e-8)

@@ -9,7 +9,7 @@ import scipy.integrate
 import uneven_island
 from wellshed.elements.lake import LakeEdge
 from wellshed.solver.fit import make_model
-from wellshed.solver.ground import Cells, cell_correlation, cell_responses, ground_covariance, make_cells
+from wellshed.solver.ground import Cells, cell_correlation, cell_responses, make_cells, make_ground
 
 MEANS = uneven_island.MEANS
 GRAIN = 150.0  # m: a patch that gives the island its finest cells
@@ -142,7 +142,9 @@ def drawn(island, spread, patch, count):
 
 def compare(island, state, spread, patch, count, share):
     """Drawn covariance against the stated one, both in units of the stated sds; ``share``: what may differ."""
-    stated = spread**2 * ground_covariance(island.places, state, island.x, island.y, patch)
+    stated = spread**2 * make_ground(island.places, island.x, island.y, patch).covariance(
+        island.places, state, island.x, island.y
+    )
     found = np.cov(drawn(island, spread, patch, count).T)
     sd = np.sqrt(np.diag(stated))
     ratio = np.diag(found) / sd**2

@@ -10,7 +10,7 @@ from wellshed.elements.recharge import RechargeArea
 from wellshed.elements.well import PumpingWell
 from wellshed.solver.boundary import solve_places
 from wellshed.solver.fit import Readings, fit
-from wellshed.solver.ground import ground_covariance
+from wellshed.solver.ground import make_ground
 from wellshed.solver.inputs import Inputs, Parameter
 from wellshed.solver.prediction import leave_one_out
 from wellshed.solver.setting import sort_elements
@@ -42,7 +42,7 @@ def site():
     rng = np.random.default_rng(11)
     r, a = np.sqrt(rng.uniform(0.05, 0.8, 14)), rng.uniform(0, 2 * np.pi, 14)
     x, y = 600 * r * np.cos(a), 400 * r * np.sin(a)
-    ground = 0.5**2 * ground_covariance(places, solution.state, x, y, 120.0)
+    ground = 0.5**2 * make_ground(places, x, y, 120.0).covariance(places, solution.state, x, y)
     noise = np.linalg.cholesky(ground + 0.05**2 * np.eye(14)) @ rng.normal(size=14)
     head = solution.flow.head(x, y) + noise
     names = tuple(f"P{k}" for k in range(14))
