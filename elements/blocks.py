@@ -2,7 +2,7 @@
 
 The kernels release the interpreter's lock, so plain threads serve. Compiled parallel loops would take half as long
 again to compile, must not be entered from two threads, and break processes that fork. Every point is worked on by
-itself: results do not depend on the number of threads.
+itself or with the same neighbours: results do not depend on the number of threads.
 """
 
 import os
@@ -12,11 +12,12 @@ from functools import cache
 
 import numba
 
+BLOCK = 64  # points that a kernel may work on side by side: blocks begin at multiples of it
 SMALL = 1024  # points: fewer are not worth a thread
 PER_THREAD = 4  # blocks for each thread, so that none waits long for the slowest
 
 
-def in_blocks(work: Callable[[slice], None], n: int, small: int = SMALL) -> None:
+def in_blocks(work: Callable[[slice], None], n: int, small: int = SMALL, multiple: int = BLOCK) -> None:
     """Call ``work`` with slices that cover range(n), several at a time.
 
     As many threads as numba would use (NUMBA_NUM_THREADS, else the cores of the process); an exception in one of
@@ -27,6 +28,7 @@ def in_blocks(work: Callable[[slice], None], n: int, small: int = SMALL) -> None
         work(slice(0, n))
         return
     size = max(-(-n // (PER_THREAD * threads)), -(-small // PER_THREAD))
+    size = -(-size // multiple) * multiple
     list(_pool(threads).map(work, [slice(start, min(start + size, n)) for start in range(0, n, size)]))
 
 

@@ -48,5 +48,5 @@ def farthest(paths: Sequence[Floats], one: Ints, other: Ints, samples: int) -> F
     points = np.concatenate(list(paths))
     first = np.concatenate([[0], np.cumsum([len(p) for p in paths])]).astype(np.int64)
     out = np.empty(one.size)
-    in_blocks(lambda part: _farthest(points, first, one[part], other[part], samples, out[part]), one.size, FEW)
+    in_blocks(lambda part: _farthest(points, first, one[part], other[part], samples, out[part]), one.size, FEW, 1)
     return out

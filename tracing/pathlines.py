@@ -107,7 +107,7 @@ def trace(
                 float(tolerance), q_rest, marks, at_marks[at], buffer[part], share[at], result[at],
             )  # fmt: skip
 
-        in_blocks(work, size, FEW)
+        in_blocks(work, size, FEW, 1)
         for i in range(size):
             path = buffer[i, : result[start + i, 0]].copy()
             path[:, 0] += flow.origin[0]
