@@ -1,6 +1,7 @@
 """The fit: recovers a truth, stands at the minimum, and its diagnostics obey their identities."""
 
 from dataclasses import replace
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
@@ -10,6 +11,7 @@ from wellshed.elements.lake import LakeEdge
 from wellshed.elements.recharge import RechargeArea
 from wellshed.elements.stream import Stream
 from wellshed.elements.well import PumpingWell
+from wellshed.solver import fit as fit_module
 from wellshed.solver.boundary import solve_places
 from wellshed.solver.fit import PRIOR_READINGS, Readings, fit, make_model
 from wellshed.solver.ground import make_ground
@@ -257,3 +259,56 @@ def test_a_gauging_fixes_what_levels_leave_open(confined):
     off = (result.theta - np.array([TRUE[n] for n in names])) / np.sqrt(np.diag(result.covariance))
     assert abs(off).max() < 3.0
     assert np.all(np.sqrt(np.diag(result.covariance))[[0, 1, 3]] < 1.0)  # of the logarithms, without any prior
+
+
+def weighed(rng, truth, factor, count=40):
+    """The ground's spread that a linear fit of two numbers finds, and what it was found from."""
+    parameters = [Parameter(n, "shift", 0, False, 0.0, sd, "") for n, sd in (("a", 1.0), ("b", 0.4))]
+    jacobian = rng.normal(size=(count, 2))
+    distance = abs(np.subtract.outer(np.arange(count), np.arange(count)))
+    own, uneven = 0.05**2 * np.eye(count), 0.3**2 * np.exp(-distance / 8.0)
+    values = jacobian @ (rng.normal(size=2) * [1.0, 0.4])
+    values += rng.multivariate_normal(np.zeros(count), own + truth**2 * uneven)
+    theta = np.array([0.1, -0.2])  # anywhere: the model is linear
+    model = SimpleNamespace(parameters=parameters, readings=SimpleNamespace(values=values))
+    point = SimpleNamespace(jacobian=jacobian, theta=theta, computed=jacobian @ theta)
+    return fit_module._ground_spread(model, point, own, uneven, factor), model, point, own, uneven
+
+
+def scale_of(model, jacobian, sigma0):
+    """Scale at the best values, by turns (general least squares by numpy), and the sd of the parameters' priors."""
+    spreads = np.array([p.sd for p in model.parameters])
+    values, scale = model.readings.values, 1.0
+    for _ in range(60):
+        inverse = np.linalg.inv(scale**2 * sigma0)
+        best = np.linalg.solve(jacobian.T @ inverse @ jacobian + np.diag(spreads**-2), jacobian.T @ inverse @ values)
+        scale, _, _ = fit_module._scale_at(values - jacobian @ best, sigma0, jacobian, model.parameters, scale)
+    return scale, spreads
+
+
+def test_the_spread_of_the_ground_is_weighed_as_its_marginal_likelihood_says():
+    """Against the density of the readings with the parameters integrated out, by scipy, times the stated priors."""
+    factor = 2.0
+    found, model, point, own, uneven = weighed(np.random.default_rng(3), 1.7, factor)
+    logs = np.linspace(-2.2, 2.2, 17)
+    score = []
+    for log in logs:
+        sigma0 = own + factor ** (2 * log) * uneven
+        scale, spreads = scale_of(model, point.jacobian, sigma0)
+        covariance = scale**2 * sigma0 + (point.jacobian * spreads**2) @ point.jacobian.T
+        density = scipy.stats.multivariate_normal(np.zeros(len(covariance)), covariance).logpdf(model.readings.values)
+        prior = scipy.stats.norm.logpdf(log) - fit_module.PRIOR_READINGS * (np.log(scale) + 0.5 / scale**2)
+        score.append(density + prior)
+    weight = np.exp(np.array(score) - max(score))
+    assert found == pytest.approx(np.sqrt(weight @ factor ** (2 * logs) / weight.sum()), rel=1e-4)
+
+
+@pytest.mark.parametrize("truth", [0.4, 1.0, 2.5])
+def test_spread_and_scale_together_follow_the_truth(truth):
+    """The data hardly tell the one from the other; their product must follow, on the wide side (a mean of squares)."""
+    rng = np.random.default_rng(11)
+    products = []
+    for _ in range(20):
+        spread, model, point, own, uneven = weighed(rng, truth, 2.0)
+        products.append(spread * scale_of(model, point.jacobian, own + spread**2 * uneven)[0])
+    assert 0.9 * truth < np.median(products) < 1.3 * truth
