@@ -13,7 +13,6 @@ from typing import Any
 
 import numba
 import platformdirs
-from numba.core import cgutils
 from numba.extending import intrinsic
 
 _PACKAGE = Path(__file__).resolve().parent.parent
@@ -49,8 +48,7 @@ driver = numba.njit(nogil=True, **_FLAGS)  # a loop over points, called from Pyt
 inlined = numba.njit(inline="always", **_FLAGS)
 
 
-@intrinsic
-def unowned(typing_context: Any, array: Any) -> Any:
+def _unowned(typing_context: Any, array: Any) -> Any:
     """The same array without its count of references, for a kernel whose caller holds it.
 
     Every use of an owned array inside a loop costs two locked operations of the processor.
@@ -58,8 +56,11 @@ def unowned(typing_context: Any, array: Any) -> Any:
 
     def code(context: Any, builder: Any, signature: Any, arguments: Any) -> Any:
         out = context.make_array(signature.args[0])(context, builder, arguments[0])
-        out.meminfo = cgutils.get_null_value(out.meminfo.type)
-        out.parent = cgutils.get_null_value(out.parent.type)
+        out.meminfo = out.meminfo.type(None)  # null pointers
+        out.parent = out.parent.type(None)
         return out._getvalue()
 
     return array(array), code
+
+
+unowned: Any = intrinsic(_unowned)

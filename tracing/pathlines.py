@@ -8,7 +8,8 @@ from numpy.typing import ArrayLike, NDArray
 
 from ..elements.blocks import in_blocks
 from ..elements.flow_field import FlowField
-from ..elements.local_arrays import DEEPEST, LocalArrays, local_arrays
+from ..elements.local_arrays import DEEPEST, local_arrays
+from ..elements.local_tree import LocalArrays
 from .endings import Ending
 from .integrator import follow_all
 from .obstacles import Line, Obstacles, make_obstacles

@@ -15,7 +15,7 @@ import shapely
 from numpy.typing import NDArray
 
 from ..elements.flow_field import FlowField
-from ..elements.local_arrays import LocalArrays
+from ..elements.local_tree import LocalArrays
 from .apart import farthest
 from .endings import Ending
 from .obstacles import Obstacles
