@@ -40,6 +40,12 @@ def _cache_folder() -> Path:
 if "NUMBA_CACHE_DIR" not in os.environ:
     numba.config.CACHE_DIR = str(_cache_folder())  # type: ignore[attr-defined]
 
+
+def in_cache(name: str) -> bool:
+    """Whether machine code of a kernel or driver of this name is kept from an earlier run."""
+    return any(Path(numba.config.CACHE_DIR).rglob(f"*.{name}-*.nbi"))  # type: ignore[attr-defined]
+
+
 # Division by zero gives inf instead of a hidden branch (which would stop vectorisation). Of fastmath only the fusing
 # of a product with a sum: the series and recurrences are chains of them. NaN stays NaN, zero keeps its sign.
 _FLAGS: dict[str, Any] = {"cache": True, "error_model": "numpy", "fastmath": {"contract"}}

@@ -74,6 +74,9 @@ def run(
     from .desk import DrawingDesk
 
     with DrawingDesk() as desk, _Progress() as progress:
+        from ..tracing.rehearsal import compile_beside
+
+        compile_beside()
         from .answering import answer, report_lines
         from .writing import write
 

@@ -5,21 +5,26 @@ import io
 import os
 import pickle
 import sys
+from collections.abc import Callable
+from functools import partial
 from pathlib import Path
 
 import matplotlib as mpl
 import numpy as np
+from matplotlib.figure import Figure
 
-from .desk import KINDS
 from .map_content import LevelMark, MapContent, Reach, WellMark, ZoneMark
 from .maps import STYLE, draw_map
 
-AT_ONCE = 2  # files
+AT_ONCE = 2  # maps
 
 
 def draw(content: MapContent, kind: str) -> bytes:
     """The map as a file, "png" or "svg"; the same bytes for the same content."""
-    figure = draw_map(content)
+    return _file(draw_map(content), content, kind)
+
+
+def _file(figure: Figure, content: MapContent, kind: str) -> bytes:
     file = io.BytesIO()
     if kind == "svg":
         with mpl.rc_context({**STYLE, "svg.hashsalt": f"{content.title} {content.case}"}):
@@ -32,33 +37,50 @@ def draw(content: MapContent, kind: str) -> bytes:
 def main() -> None:
     """Draw the maps that come pickled by the standard input, each with the paths of its files, until it ends.
 
-    Where processes can fork, each file is drawn by a child, so that the library is loaded once and two cores draw.
+    Where processes can fork, each map is drawn by a child, so that the library is loaded once and two cores draw.
     """
     gc.disable()  # figures are garbage that refers to itself, but there are few
-    rehearsal = _rehearsal()
-    for kind in KINDS:
-        draw(rehearsal, kind)
+    draw(_rehearsal(), "png")
     children = 0
     while True:
         try:
             files, content = pickle.load(sys.stdin.buffer)
         except EOFError:
             break
-        for file in files:
-            if not hasattr(os, "fork"):
-                _save(content, file)
-                continue
-            if children == AT_ONCE:
-                os.wait()
-                children -= 1
-            if os.fork() == 0:
-                try:
-                    _save(content, file)
-                finally:
-                    os._exit(0)
-            children += 1
+        if children == AT_ONCE:
+            os.wait()
+            children -= 1
+        children += _beside(partial(_save_all, content, files))
     for _ in range(children):
         os.wait()
+
+
+def _beside(work: Callable[[], None]) -> int:
+    """Have work done by a forked child, or here where processes cannot fork; the number of children to wait for."""
+    if not hasattr(os, "fork"):
+        work()
+        return 0
+    if os.fork() == 0:
+        try:
+            work()
+        finally:
+            os._exit(0)
+    return 1
+
+
+def _save_all(content: MapContent, files: list[Path]) -> None:
+    """Lay the map out once, then save its files side by side."""
+    figure = draw_map(content)
+    children = [_beside(partial(_save, figure, content, file)) for file in files[1:]]
+    _save(figure, content, files[0])
+    for _ in range(sum(children)):
+        os.wait()
+
+
+def _save(figure: Figure, content: MapContent, file: Path) -> None:
+    part = file.with_suffix(f"{file.suffix}.part")
+    part.write_bytes(_file(figure, content, file.suffix[1:]))
+    part.rename(file)  # whole or not at all
 
 
 def _rehearsal() -> MapContent:
@@ -75,9 +97,3 @@ def _rehearsal() -> MapContent:
         (WellMark("well", 0.7, 0.3, 1.0), WellMark("well", 0.9, 0.1, -1.0)), levels, (line + 0.05,),
         ((0.5, 0.5, 1.0),), ((0.6, 0.2, 0.0),), zones, ((0.8, 0.8),),
     )  # fmt: skip
-
-
-def _save(content: MapContent, file: Path) -> None:
-    part = file.with_suffix(f"{file.suffix}.part")
-    part.write_bytes(draw(content, file.suffix[1:]))
-    part.rename(file)  # whole or not at all
