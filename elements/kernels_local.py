@@ -18,10 +18,11 @@ _TURNS = np.exp(2j * np.pi * np.arange(N_TERM) / N_TERM)
 def find_square(x, y, tree):
     """The smallest square that holds the point; square 0, where all elements are near, outside the box."""
     square, child = tree.square, tree.child
-    side = square[child.size - 1, 2] if child.size == 1 else square[1, 2] * 0.5**0.5
-    k = 1
-    if child.size == 1 or abs(x - square[1, 0]) > side or abs(y - square[1, 1]) > side:
-        k = 0
+    k = 0
+    if child.size > 1:
+        side = square[1, 2] * 0.5**0.5
+        if abs(x - square[1, 0]) <= side and abs(y - square[1, 1]) <= side:
+            k = 1
     while child[k] >= 0:
         k = child[k] + (1 if x > square[k, 0] else 0) + (2 if y > square[k, 1] else 0)
     return k
