@@ -18,7 +18,7 @@ TOLERANCE = 1e-5  # m of position a step; a relative one would mean nothing on m
 MOST_POINTS = 6000
 CHUNK = 192
 FEW = 4  # particles: fewer are followed by one thread
-MANY = 200  # particles: for as many a tree of series pays
+CHEAP, PAYS = 30, 2700  # a tree of series pays for so many particles times the panels beyond CHEAP
 REST = 1e-7  # of the typical discharge: slower water has come to rest
 
 Floats = NDArray[np.float64]
@@ -90,7 +90,7 @@ def trace(
     marks = np.ascontiguousarray(np.atleast_1d(np.asarray(times, dtype=float)))
     arrays = obstacles.arrays(flow.origin)
     n, n_lines = local_x.size, len(obstacles.names)
-    field = tree or series_of(flow, obstacles, DEEPEST if n >= MANY else 0)
+    field = tree or series_of(flow, obstacles, DEEPEST if n * (len(flow.arrays.kind) - CHEAP) > PAYS else 0)
     aquifer = flow.aquifer
     medium = np.array([aquifer.conductivity, aquifer.thickness, aquifer.porosity])
     q_rest = REST * typical_discharge(flow, obstacles.box)
