@@ -128,6 +128,7 @@ def answer(
     context = Context(scenario, fitted, cases, say)
     answered: list[list[Result]] = [[] for _ in scenario.questions]
     checks: list[Check] = []
+    of_base: list[Check] = []
     maps: dict[str, MapContent] = {}
     for solved in cases.values():
         own = [*_field_checks(solved), *_stream_checks(scenario, model, fitted, solved)]
@@ -139,8 +140,10 @@ def answer(
                 asked += found
         own += [check for result in asked for check in result.checks]
         checks += own
+        of_base = own if solved.name == BASE else of_base
         if solved.name == BASE or asked:
-            maps[solved.name] = case_map(solved, scenario, model, fitted, asked, checks if solved.name == BASE else own)
+            rests_on = own if solved.name == BASE else [*of_base, *own]  # a case starts from the fitted field
+            maps[solved.name] = case_map(solved, scenario, model, fitted, asked, rests_on)
             if map_done is not None:
                 map_done(solved.name, maps[solved.name])
     results = tuple(result for found in answered for result in found)

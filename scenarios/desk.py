@@ -22,7 +22,7 @@ class DrawingDesk:
 
     def __enter__(self) -> "DrawingDesk":
         self._contents: dict[str, MapContent] = {}
-        self._folder = tempfile.TemporaryDirectory(prefix="wellshed-")
+        self._folder = tempfile.TemporaryDirectory(prefix="wellshed-", ignore_cleanup_errors=True)
         self._process = subprocess.Popen(
             COMMAND, stdin=subprocess.PIPE, stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL, start_new_session=True
         )

@@ -265,21 +265,22 @@ def _ground_spread(model: _Model, point: _Point, own: Floats, uneven: Floats, fa
     parameters, jacobian = model.parameters, point.jacobian
     mean = np.array([p.mean for p in parameters])
     precision = _precision(parameters)
-    from_mean = (
-        model.readings.values - point.computed + jacobian @ (point.theta - mean)
-    )  # what the parameters have to explain, from their means
+    # what the parameters have to explain, from their means
+    from_mean = model.readings.values - point.computed + jacobian @ (point.theta - mean)
     logs = np.linspace(-GRID_REACH, GRID_REACH, GRID)
     score = np.empty(GRID)
     for k, log in enumerate(logs):
         sigma0 = own + np.exp(2.0 * log * np.log(factor)) * uneven
         root = np.linalg.cholesky(sigma0)
         white = scipy.linalg.solve_triangular(root, np.column_stack([jacobian, from_mean]), lower=True)
-        theta, scale, previous = point.theta - mean, 1.0, 0.0
-        while abs(scale - previous) > 1e-6 * scale:  # the best values and the scale at them, by turns
+        theta, scale, information = point.theta - mean, 1.0, np.diag(precision)
+        for _ in range(MOST_STEPS):  # the best values and the scale at them, by turns
             previous = scale
             scale, _, _ = _scale_at(from_mean - jacobian @ theta, sigma0, jacobian, parameters, scale)
             information = white[:, :-1].T @ white[:, :-1] / scale**2 + np.diag(precision)
             theta = np.linalg.solve(information, white[:, :-1].T @ white[:, -1]) / scale**2
+            if abs(scale - previous) <= 1e-6 * scale:
+                break
         misfit = np.sum((white[:, -1] - white[:, :-1] @ theta) ** 2) / scale**2 + precision @ theta**2
         score[k] = (
             -np.sum(np.log(scale * np.diag(root))) - 0.5 * np.linalg.slogdet(information)[1] - 0.5 * misfit

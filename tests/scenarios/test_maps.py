@@ -10,7 +10,7 @@ import pytest
 from matplotlib.image import imread
 from matplotlib.text import Annotation
 from small import changed, put
-from wellshed.scenarios import desk
+from wellshed.scenarios import answering, desk
 from wellshed.scenarios.answering import answer
 from wellshed.scenarios.drawing import draw
 from wellshed.scenarios.maps import draw_map
@@ -119,6 +119,19 @@ def test_the_map_says_when_a_check_failed(contents):
     words = [t.get_text() for t in draw_map(failed).axes[0].texts]
     assert "INCOMPLETE" in words
     assert "INCOMPLETE" not in [t.get_text() for t in draw_map(contents["base"]).axes[0].texts]
+
+
+@pytest.mark.parametrize(("failing", "marked"), [("base", {"base", "more"}), ("more", {"more"})])
+def test_a_map_is_marked_when_what_it_rests_on_failed(tmp_path, monkeypatch, failing, marked):
+    """A case starts from the fitted field, so that a failed check of the base is its failure too."""
+    checks = answering._field_checks
+
+    def some_fail(case):
+        return [replace(c, passed=c.passed and case.name != failing) for c in checks(case)]
+
+    monkeypatch.setattr(answering, "_field_checks", some_fail)
+    maps = answer(load(put(tmp_path))).maps
+    assert {name for name, content in maps.items() if content.incomplete} == marked
 
 
 def test_states_of_reaches_differ_without_colour(contents):
